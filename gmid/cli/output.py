@@ -1,0 +1,265 @@
+"""What every command shares: rows as aligned columns, CSV or JSON, notes on stderr, progress."""
+
+from __future__ import annotations
+
+import csv
+import json
+import math
+import shutil
+import sys
+import time
+from collections.abc import Callable, Mapping, Sequence
+from typing import Any
+
+_PREFIXED = ("A", "S", "F", "Hz")
+_CUSTOMARY = {"m": ("um", -6), "A/m": ("uA/um", 0), "degC": ("C", 0)}
+_GAP = 3
+"""Columns between two cells on a terminal."""
+
+
+def say(text: str) -> None:
+    """Write a note to stderr, where it does not disturb piped output.
+
+    Parameters
+    ----------
+    text : str
+        One line.
+
+    Examples
+    --------
+    >>> say("vsb = 0 V by default.")
+    """
+    sys.stderr.write(f"{text}\n")
+
+
+def write_json(data: Any) -> None:
+    """Write one JSON document to stdout.
+
+    Parameters
+    ----------
+    data : object
+        Plain values, lists and dicts.
+
+    Examples
+    --------
+    >>> write_json({"format": 1})
+    {
+      "format": 1
+    }
+    """
+    sys.stdout.write(json.dumps(data, indent=2, allow_nan=False) + "\n")
+
+
+def write_csv(rows: Sequence[Mapping[str, Any]]) -> None:
+    """Write rows as CSV to stdout, numbers with all their digits.
+
+    Parameters
+    ----------
+    rows : sequence of mapping
+        All with the keys of the first.
+
+    Examples
+    --------
+    >>> write_csv([{"vgs": 0.5, "corner": "tt"}])
+    vgs,corner
+    0.5,tt
+    """
+    if not rows:
+        return
+    writer = csv.DictWriter(sys.stdout, fieldnames=list(rows[0]), lineterminator="\n")
+    writer.writeheader()
+    writer.writerows(rows)
+
+
+def write_blocks(
+    heads: Sequence[str], rows: Sequence[Sequence[str]], *, keys: Sequence[int]
+) -> None:
+    """Write columns of numbers; in a narrow window the columns go on in further blocks.
+
+    Parameters
+    ----------
+    heads : sequence of str
+        Column heads.
+    rows : sequence of sequence of str
+        Cells, which are never broken.
+    keys : sequence of int, keyword-only
+        Columns that tell the rows apart, repeated at the left of every block.
+
+    Examples
+    --------
+    >>> write_blocks(["L [um]", "ID [uA]"], [["0.18", "1"]], keys=[0])
+    L [um]  ID [uA]
+      0.18        1
+    """
+    if not sys.stdout.isatty():
+        write_columns(heads, rows)
+        return
+    blocks = _split_columns(heads, rows, keys, shutil.get_terminal_size().columns)
+    for number, block in enumerate(blocks):
+        if number:
+            sys.stdout.write("\n")
+        write_columns([heads[i] for i in block], [[row[i] for i in block] for row in rows])
+
+
+def _split_columns(
+    heads: Sequence[str], rows: Sequence[Sequence[str]], keys: Sequence[int], window: int
+) -> list[list[int]]:
+    """Deal the columns out to blocks that fit the window, keys first in each."""
+    sizes = [max(len(row[i]) for row in (heads, *rows)) + _GAP for i in range(len(heads))]
+    blocks: list[list[int]] = []
+    room = 0
+    for column in range(len(heads)):
+        if column in keys:
+            continue
+        if not blocks or sizes[column] > room:
+            blocks.append(list(keys))
+            room = window - sum(sizes[key] for key in keys)
+        blocks[-1].append(column)
+        room -= sizes[column]
+    return blocks or [list(keys)]
+
+
+def format_column(name: str, values: Sequence[Any], *, digits: int = 4) -> tuple[str, list[str]]:
+    """Write the values of one quantity with one prefix for all.
+
+    Parameters
+    ----------
+    name : str
+        Of the nomenclature.
+    values : sequence of float or None
+        In SI; what is missing or not finite becomes ``-``.
+    digits : int, keyword-only
+        Significant digits.
+
+    Returns
+    -------
+    head : str
+        Symbol and unit with prefix.
+    cells : list of str
+        One for each value.
+
+    Examples
+    --------
+    >>> format_column("id", [1e-6, 12.3456e-6])
+    ('ID [uA]', ['1', '12.35'])
+    >>> format_column("current_density", [0.5])
+    ('ID/W [uA/um]', ['0.5'])
+    """
+    from gmid.nomenclature import QUANTITIES
+    from gmid.quantity import choose_prefix
+
+    quantity = QUANTITIES[name]
+    unit, power = _CUSTOMARY.get(quantity.unit, (quantity.unit, 0))
+    if quantity.unit in _PREFIXED:
+        prefix, power = choose_prefix(values)
+        unit = prefix + unit
+    head = f"{quantity.symbol} [{unit}]" if unit else quantity.symbol
+    return head, [_plain(value, power, digits) for value in values]
+
+
+def _plain(value: float | None, power: int, digits: int) -> str:
+    """Write a number without exponent where that stays short."""
+    if value is None or not math.isfinite(value):
+        return "-"
+    text = f"{value / 10.0**power:.{digits}g}"
+    plain = f"{float(text):.0f}" if "e+" in text else text
+    return plain if len(plain) <= digits + 4 else text
+
+
+def write_columns(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
+    """Write aligned columns to stdout: drawn on a terminal, plain when piped.
+
+    Parameters
+    ----------
+    heads : sequence of str
+        Column heads.
+    rows : sequence of sequence of str
+        Cells; those that look like numbers are set flush right.
+
+    Examples
+    --------
+    >>> write_columns(["L", "id"], [["180 nm", "1 uA"]])
+    L       id
+    180 nm  1 uA
+    """
+    cells = [list(heads), *[list(row) for row in rows]]
+    widths = [max(len(row[i]) for row in cells) for i in range(len(heads))]
+    right = [bool(rows) and all(_numeric(row[i]) for row in rows) for i in range(len(heads))]
+    if sys.stdout.isatty():
+        _draw(heads, rows, right)
+        return
+    for row in cells:
+        line = "  ".join(
+            cell.rjust(width) if flush else cell.ljust(width)
+            for cell, width, flush in zip(row, widths, right, strict=True)
+        )
+        sys.stdout.write(line.rstrip() + "\n")
+
+
+def _numeric(text: str) -> bool:
+    try:
+        float(text)
+    except ValueError:
+        return text in ("", "-")
+    return True
+
+
+def _draw(heads: Sequence[str], rows: Sequence[Sequence[str]], right: Sequence[bool]) -> None:
+    """Draw a table fitted to the terminal, with markup off so that [m] stays [m]."""
+    from rich import box
+    from rich.console import Console
+    from rich.table import Table
+    from rich.text import Text
+
+    table = Table(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False)
+    for head, flush in zip(heads, right, strict=True):
+        table.add_column(Text(head), justify="right" if flush else "left", overflow="fold")
+    for row in rows:
+        table.add_row(*[Text(cell) for cell in row])
+    width, height = shutil.get_terminal_size()
+    console = Console(markup=False, highlight=False, file=sys.stdout, width=width, height=height)
+    console.print(table)
+
+
+def make_progress(*, every: float = 0.1) -> Callable[[str, int, int], None]:
+    """Make a callback that shows progress on stderr.
+
+    On a terminal one line is rewritten; elsewhere only lines at wide intervals appear.
+
+    Parameters
+    ----------
+    every : float
+        Least time between two updates [s].
+
+    Returns
+    -------
+    callable
+        Taking what is done, how many steps are done, and how many there are.
+
+    Examples
+    --------
+    >>> make_progress()("reading", 0, 3)
+    """
+    begin = time.monotonic()
+    last = [-1e9]
+    live = sys.stderr.isatty()
+    interval = every if live else 5.0
+
+    def show(what: str, done: int, total: int) -> None:
+        now = time.monotonic()
+        if done < total and now - last[0] < interval:
+            return
+        if not live and (done >= total or now - begin < interval):
+            return
+        last[0] = now
+        share = done / total if total else 1.0
+        left = (now - begin) * (1 - share) / share if share > 0 else 0.0
+        text = f"{done}/{total} {what}" + (f", about {left:.0f} s left" if done else "")
+        if live:
+            end = "\n" if done >= total else ""
+            sys.stderr.write(f"\r\x1b[K{text[:100]}{end}")
+        else:
+            sys.stderr.write(f"{text}\n")
+        sys.stderr.flush()
+
+    return show

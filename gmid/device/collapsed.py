@@ -1,0 +1,266 @@
+"""Splines at settled lengths: the hot path of a circuit's bias and small-signal solution.
+
+The length is collapsed once for each that is in use.  What is left are three axes, and for
+each point a stencil of at most 4 x 4 x 4 coefficients for each quantity, read as four runs of
+consecutive numbers.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.lib.stride_tricks import as_strided
+
+from gmid.device.coordinates import drain_coordinate, drain_stretch
+from gmid.device.spline import Array, Indices, SplineAxis
+
+OFF_SLOPE, ON_SLOPE = 10.0, 1.0
+"""Slopes of ln id by vgs below and above the table, for a solver on its way [1/V]."""
+
+_CHUNK = 1 << 18
+"""Numbers gathered at a time, so that they stay in the cache."""
+
+
+@dataclass(frozen=True, eq=False)
+class Place:
+    """Where points lie among the coefficients, and with which weights.
+
+    Parameters
+    ----------
+    first : ndarray of int, shape (n,)
+        First run of coefficients.
+    vds, gate, vsb : ndarray, shape (n, order)
+        Weights along each axis.
+    vds_slope, gate_slope, vsb_slope : ndarray, shape (n, order)
+        Weights of derivatives by vds, by the shifted gate voltage, and by vsb [1/V].
+    threshold_slope : ndarray, shape (n,)
+        Derivative of the threshold by vsb [-].
+    beyond : ndarray, shape (n,)
+        How far the shifted gate voltage lies outside its axis [V].
+
+    Examples
+    --------
+    >>> empty = np.empty((0, 4))
+    >>> Place(np.empty(0, int), *[empty] * 6, np.empty(0), np.empty(0)).first.size
+    0
+    """
+
+    first: Indices
+    vds: Array
+    gate: Array
+    vsb: Array
+    vds_slope: Array
+    gate_slope: Array
+    vsb_slope: Array
+    threshold_slope: Array
+    beyond: Array
+
+
+@dataclass(frozen=True, eq=False)
+class Collapsed:
+    """Splines of several quantities over vsb, vds and vgs, at one or more lengths.
+
+    Parameters
+    ----------
+    vsb, vds, gate : SplineAxis
+        Axes; vsb and vds in their coordinates, the gate shifted by the threshold.
+    coefficients : ndarray, shape (lengths, vsb spans, vsb order, n_vds, n_gate, quantities)
+        As `expand_spans` gives them.
+    threshold : ndarray, shape (lengths, vsb spans, vsb order)
+        Coefficients of the threshold [V].
+    offset : float
+        Phi of the body-bias coordinate [V].
+
+    Examples
+    --------
+    >>> from gmid.device.spline import natural_axis, uniform_axis
+    >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
+    >>> spline = Collapsed(one, one, gate, (gate.operator @ gate.points).reshape(1, 1, 1, 1, 7, 1),
+    ...                    np.zeros((1, 1, 1)), 0.8)
+    >>> place = spline.locate(np.zeros(1, int), np.array([0.3]), np.zeros(1), np.zeros(1))
+    >>> spline.values(place).round(12)
+    array([[0.3]])
+    """
+
+    vsb: SplineAxis
+    vds: SplineAxis
+    gate: SplineAxis
+    coefficients: Array
+    threshold: Array
+    offset: float
+
+    @property
+    def lengths(self) -> int:
+        """Number of lengths."""
+        return int(self.coefficients.shape[0])
+
+    @cached_property
+    def _runs(self) -> Array:
+        """Overlapping rows: all that one point needs at one vds, side by side."""
+        lengths, spans, order, drains, gates, count = self.coefficients.shape
+        flat = np.ascontiguousarray(self.coefficients.transpose(0, 1, 3, 4, 2, 5)).reshape(-1)
+        step = order * count
+        rows = lengths * spans * drains * gates - self.gate.order + 1
+        return as_strided(flat, (rows, self.gate.order * step), (step * 8, 8), writeable=False)
+
+    def locate(
+        self, which: Indices, vgs: Array, vds: Array, vsb: Array, past: Array | None = None
+    ) -> Place:
+        """Find points among the coefficients.
+
+        Parameters
+        ----------
+        which : ndarray of int, shape (n,)
+            Which of the lengths.
+        vgs, vds, vsb : ndarray, shape (n,)
+            Voltages [V], inside the table.
+        past : ndarray, shape (n,), optional
+            How far vsb really lies past the edge at which it is given [V]; the threshold
+            follows it in a straight line, all else stays.
+
+        Returns
+        -------
+        Place
+            To be used with any spline of the same axes.
+
+        Examples
+        --------
+        >>> from gmid.device.spline import natural_axis, uniform_axis
+        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
+        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 1, 7, 1)), np.ones((1, 1, 1)), 0.8)
+        >>> spline.locate(np.zeros(1, int), np.ones(1), np.zeros(1), np.zeros(1)).first
+        array([0])
+        """
+        coordinate = np.sqrt(self.offset + vsb)
+        bulk, bulk_place = self.vsb.locate(coordinate)
+        w_bulk, d_bulk = self.vsb.both(bulk, bulk_place)
+        d_bulk = d_bulk * (0.5 / coordinate)[:, None]
+        lines = self.threshold[which, bulk]
+        shift, tilt = (np.einsum("ns,ns->n", lines, weights) for weights in (w_bulk, d_bulk))
+        if past is not None:
+            shift = shift + tilt * past
+            d_bulk = np.where(past[:, None] == 0, d_bulk, 0.0)
+        gate_at = vgs - shift
+        gate_in = np.clip(gate_at, self.gate.breaks[0], self.gate.breaks[-1])
+        drain, drain_place = self.vds.locate(drain_coordinate(vds))
+        w_drain, d_drain = self.vds.both(drain, drain_place)
+        d_drain = d_drain * drain_stretch(vds)[:, None]
+        gate, gate_place = self.gate.locate(gate_in)
+        w_gate, d_gate = self.gate.both(gate, gate_place)
+        first = ((which * self.vsb.spans + bulk) * self.vds.size + drain) * self.gate.size + gate
+        return Place(
+            first, w_drain, w_gate, w_bulk, d_drain, d_gate, d_bulk, tilt, gate_at - gate_in
+        )
+
+    def values(self, place: Place) -> Array:
+        """Evaluate all quantities.
+
+        Parameters
+        ----------
+        place : Place
+            Where, as `locate` gave it.
+
+        Returns
+        -------
+        ndarray, shape (n, quantities)
+            Interpolated values.
+
+        Examples
+        --------
+        >>> from gmid.device.spline import natural_axis, uniform_axis
+        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
+        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 1, 7, 2)), np.ones((1, 1, 1)), 0.8)
+        >>> place = spline.locate(np.zeros(1, int), np.ones(1), np.zeros(1), np.zeros(1))
+        >>> spline.values(place).round(9)
+        array([[1., 1.]])
+        """
+        count = self.coefficients.shape[-1]
+        found = np.empty((place.first.size, count))
+        for part in self._chunks(place):
+            runs = self._gather(place, part)
+            by_gate = np.matmul(place.vds[part, None, :], runs)
+            by_bulk = np.matmul(
+                place.gate[part, None, :], by_gate.reshape(len(runs), self.gate.order, -1)
+            ).reshape(len(runs), self.vsb.order, count)
+            found[part] = np.einsum("nsq,ns->nq", by_bulk, place.vsb[part])
+        return found
+
+    def gradient(self, place: Place) -> tuple[Array, Array, Array, Array]:
+        """Evaluate the first quantity and its derivatives.
+
+        Parameters
+        ----------
+        place : Place
+            Where, as `locate` gave it.
+
+        Returns
+        -------
+        value, by_vgs, by_vds, by_vsb : ndarray, shape (n,)
+            The value and its derivatives by the three voltages [1/V].
+
+        Examples
+        --------
+        >>> from gmid.device.spline import natural_axis, uniform_axis
+        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
+        >>> spline = Collapsed(one, one, gate, (gate.operator @ gate.points)
+        ...                    .reshape(1, 1, 1, 1, 7, 1), np.zeros((1, 1, 1)), 0.8)
+        >>> place = spline.locate(np.zeros(1, int), np.array([0.3]), np.zeros(1), np.zeros(1))
+        >>> float(spline.gradient(place)[1][0].round(9))
+        1.0
+        """
+        found = np.empty((4, place.first.size))
+        for part in self._chunks(place):
+            runs = self._gather(place, part)
+            bulk, shape = place.vsb[part], (len(runs), self.gate.order, self.vsb.order)
+            flat = np.einsum("ndk,nd->nk", runs, place.vds[part]).reshape(shape)
+            tilt = np.einsum("ndk,nd->nk", runs, place.vds_slope[part]).reshape(shape)
+            line = np.einsum("nus,nu->ns", flat, place.gate[part])
+            rise = np.einsum("nus,nu->ns", flat, place.gate_slope[part])
+            lean = np.einsum("nus,nu->ns", tilt, place.gate[part])
+            found[0, part] = np.einsum("ns,ns->n", line, bulk)
+            found[1, part] = np.einsum("ns,ns->n", rise, bulk)
+            found[2, part] = np.einsum("ns,ns->n", lean, bulk)
+            found[3, part] = np.einsum("ns,ns->n", line, place.vsb_slope[part])
+        if np.any(place.beyond):
+            outer = np.where(place.beyond < 0, OFF_SLOPE, ON_SLOPE)
+            found[0] += outer * place.beyond
+            found[1] = np.where(place.beyond == 0, found[1], outer)
+        found[3] -= found[1] * place.threshold_slope
+        return found[0], found[1], found[2], found[3]
+
+    def _chunks(self, place: Place) -> list[slice]:
+        width = self.vds.order * self._runs.shape[1]
+        step = max(64, _CHUNK // width)
+        return [slice(at, at + step) for at in range(0, place.first.size, step)]
+
+    def _gather(self, place: Place, part: slice) -> Array:
+        rows = place.first[part, None] + np.arange(self.vds.order) * self.gate.size
+        return np.asarray(self._runs[rows])
+
+
+def expand_spans(coefficients: Array, axis: SplineAxis) -> Array:
+    """Copy the coefficients of each span of the second axis side by side.
+
+    Parameters
+    ----------
+    coefficients : ndarray, shape (k, n, ...)
+        With the n coefficients of `axis` second.
+    axis : SplineAxis
+        The axis.
+
+    Returns
+    -------
+    ndarray, shape (k, spans, order, ...)
+        For each span, the coefficients that bear on it.
+
+    Examples
+    --------
+    >>> from gmid.device.spline import natural_axis
+    >>> expand_spans(np.arange(5.0)[None], natural_axis(np.arange(5.0)))
+    array([[[0., 1., 2., 3.],
+            [1., 2., 3., 4.]]])
+    """
+    columns = np.arange(axis.spans)[:, None] + np.arange(axis.order)
+    return np.ascontiguousarray(coefficients[:, columns])

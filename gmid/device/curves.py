@@ -1,0 +1,275 @@
+"""Piecewise polynomials along vgs, through values alone or values and slopes.
+
+The gate axis is read through these before the spline sees it, so that every length and body
+bias can be shifted to a common threshold.  Smooth data with slopes get a quintic, smooth data
+without them a cubic spline, noisy data a monotone cubic that stays between its neighbours.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from gmid.device.spline import Array, apply_along, natural_axis
+
+
+@dataclass(frozen=True, eq=False)
+class Curves:
+    """Many piecewise polynomials over the same points.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n,)
+        Ends of the pieces.
+    pieces : ndarray, shape (..., n - 1, order)
+        Coefficients by powers of the place within the piece, 0 to 1.
+    bend : bool
+        Whether the slope goes on falling as 1/x beyond the upper end, as gm/Id does; beyond
+        the lower end, and otherwise, the curve is straight.
+
+    Examples
+    --------
+    >>> points = np.array([0.0, 1.0, 2.0, 3.0])
+    >>> curves = cubic_curves(points, points[None] ** 2)
+    >>> curves.values(np.array([[1.5, 4.0]]))
+    array([[ 2.25, 15.  ]])
+    """
+
+    points: Array
+    pieces: Array
+    bend: bool = False
+
+    def values(self, x: Array) -> Array:
+        """Evaluate each curve at its own places.
+
+        Parameters
+        ----------
+        x : ndarray, shape (..., m)
+            Places for each curve; the leading axes must match those of `pieces` or be 1.
+
+        Returns
+        -------
+        ndarray, shape (..., m)
+            Values.
+
+        Examples
+        --------
+        >>> cubic_curves(np.arange(2.0), np.array([[0.0, 3.0]])).values(np.array([[0.5]]))
+        array([[1.5]])
+        """
+        return self._evaluate(x)[0]
+
+    def slopes(self, x: Array) -> Array:
+        """Give the slope of each curve at its own places.
+
+        Parameters
+        ----------
+        x : ndarray, shape (..., m)
+            As for `values`.
+
+        Returns
+        -------
+        ndarray, shape (..., m)
+            First derivatives.
+
+        Examples
+        --------
+        >>> cubic_curves(np.arange(2.0), np.array([[0.0, 3.0]])).slopes(np.array([[0.5]]))
+        array([[3.]])
+        """
+        return self._evaluate(x)[1]
+
+    def _evaluate(self, x: Array) -> tuple[Array, Array]:
+        points = self.points
+        if points.size == 1:
+            flat = np.broadcast_to(
+                self.pieces[..., 0, :1], np.broadcast_shapes((*self.pieces.shape[:-2], 1), x.shape)
+            )
+            return flat, np.zeros(flat.shape)
+        within = np.clip(x, points[0], points[-1])
+        cell = np.clip(np.searchsorted(points, within, side="right") - 1, 0, points.size - 2)
+        width = (points[1:] - points[:-1])[cell]
+        place = (within - points[cell]) / width
+        value = slope = curve = np.zeros(1)
+        for power in range(self.pieces.shape[-1] - 1, -1, -1):
+            coefficient = np.take_along_axis(self.pieces[..., power], cell, axis=-1)
+            curve = curve * place + 2.0 * slope
+            slope = slope * place + value
+            value = value * place + coefficient
+        slope, beyond = slope / width, x - within
+        if not self.bend:
+            return value + beyond * slope, slope
+        return _continue(value, slope, curve / width**2, beyond)
+
+
+def _continue(value: Array, slope: Array, curve: Array, beyond: Array) -> tuple[Array, Array]:
+    """Continue curves so that above the end the slope falls as slope/(1 + fall*beyond)."""
+    fall = np.divide(-curve, slope, out=np.zeros(slope.shape), where=slope > 0)
+    reach = np.where((beyond > 0) & (fall > 1e-6), beyond * fall, 0.0)
+    bent = reach > 0
+    gain = np.divide(np.log1p(reach), reach, out=np.ones(reach.shape), where=bent)
+    return value + beyond * slope * gain, slope / (1.0 + reach)
+
+
+def cubic_curves(points: Array, values: Array) -> Curves:
+    """Lay a not-a-knot cubic spline through values.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n,)
+        Strictly rising.
+    values : ndarray, shape (..., n)
+        Values.
+
+    Returns
+    -------
+    Curves
+        Of degree 3, or less with fewer than four points.
+
+    Examples
+    --------
+    >>> cubic_curves(np.arange(4.0), np.arange(4.0)[None]).slopes(np.array([[0.3]])).round(9)
+    array([[1.]])
+    """
+    if points.size == 1:
+        return Curves(points, values[..., None])
+    return _hermite(points, values, apply_along(slope_operator(points), values, -1))
+
+
+def slope_operator(points: Array) -> Array:
+    """Make the matrix that gives the slopes of a cubic spline at its own points.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n,)
+        Strictly rising, at least two.
+
+    Returns
+    -------
+    ndarray, shape (n, n)
+        Slopes = matrix times values.
+
+    Examples
+    --------
+    >>> slope_operator(np.array([0.0, 2.0]))
+    array([[-0.5,  0.5],
+           [-0.5,  0.5]])
+    """
+    axis = natural_axis(points)
+    span, place = axis.locate(points)
+    rows = np.zeros((points.size, axis.size))
+    np.put_along_axis(rows, span[:, None] + np.arange(axis.order), axis.slopes(span, place), 1)
+    return np.asarray(rows @ axis.operator)
+
+
+def quintic_curves(points: Array, values: Array, slopes: Array) -> Curves:
+    """Lay a quintic spline through values and slopes, its third derivative continuous.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n,)
+        Strictly rising, at least four.
+    values, slopes : ndarray, shape (..., n)
+        Values and first derivatives.
+
+    Returns
+    -------
+    Curves
+        Of degree 5.
+
+    Examples
+    --------
+    >>> points = np.array([0.0, 1.0, 2.0, 4.0])
+    >>> curves = quintic_curves(points, points[None] ** 4, 4 * points[None] ** 3)
+    >>> float(curves.values(np.array([[3.0]]))[0, 0].round(6))
+    81.0
+
+    References
+    ----------
+    The condition at inner points is that of two quintic Hermite pieces meeting with equal
+    third derivatives; Spaeth, One Dimensional Spline Interpolation (1995), from memory.
+    """
+    bends = _second_derivatives(points, values, slopes)
+    width = np.diff(points)
+    rise = np.diff(values, axis=-1)
+    d0, d1 = slopes[..., :-1] * width, slopes[..., 1:] * width
+    b0, b1 = bends[..., :-1] * width**2, bends[..., 1:] * width**2
+    pieces = np.stack(
+        (
+            values[..., :-1],
+            d0,
+            b0 / 2,
+            10 * rise - 6 * d0 - 4 * d1 - 1.5 * b0 + 0.5 * b1,
+            -15 * rise + 8 * d0 + 7 * d1 + 1.5 * b0 - b1,
+            6 * rise - 3 * d0 - 3 * d1 - 0.5 * b0 + 0.5 * b1,
+        ),
+        axis=-1,
+    )
+    return Curves(points, pieces, bend=True)
+
+
+def _second_derivatives(points: Array, values: Array, slopes: Array) -> Array:
+    """Solve for second derivatives; at both ends they are those of a spline of the slopes."""
+    width = np.diff(points)
+    count = points.size
+    matrix = np.zeros((count, count))
+    matrix[0, 0] = matrix[-1, -1] = 1.0
+    inner = np.arange(1, count - 1)
+    matrix[inner, inner - 1] = -3 / width[:-1]
+    matrix[inner, inner] = 9 * (1 / width[:-1] + 1 / width[1:])
+    matrix[inner, inner + 1] = -3 / width[1:]
+    right = apply_along(slope_operator(points), slopes, -1)
+    rise = np.diff(values, axis=-1) / width**3
+    before = (24 * slopes[..., :-2] + 36 * slopes[..., 1:-1]) / width[:-1] ** 2
+    after = (36 * slopes[..., 1:-1] + 24 * slopes[..., 2:]) / width[1:] ** 2
+    right[..., 1:-1] = 60 * (rise[..., 1:] - rise[..., :-1]) + before - after
+    return apply_along(np.asarray(np.linalg.inv(matrix), dtype=np.float64), right, -1)
+
+
+def monotone_curves(points: Array, values: Array) -> Curves:
+    """Lay a cubic through values that never leaves the range of two neighbours.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n,)
+        Strictly rising.
+    values : ndarray, shape (..., n)
+        Values, however rough.
+
+    Returns
+    -------
+    Curves
+        Of degree 3 with continuous slope.
+
+    Examples
+    --------
+    >>> curves = monotone_curves(np.arange(4.0), np.array([[0.0, 0.0, 1.0, 1.0]]))
+    >>> curves.values(np.array([[0.5, 1.5]]))
+    array([[0. , 0.5]])
+
+    References
+    ----------
+    Fritsch and Butland, SIAM J. Sci. Stat. Comput. 5 (1984) 300 (from memory).
+    """
+    if points.size < 3:
+        return cubic_curves(points, values)
+    width = np.diff(points)
+    secant = np.diff(values, axis=-1) / width
+    left, right = secant[..., :-1], secant[..., 1:]
+    one, two = 2 * width[1:] + width[:-1], width[1:] + 2 * width[:-1]
+    same = left * right > 0
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        mean = (one + two) / (one / left + two / right)
+    slopes = np.zeros(values.shape)
+    slopes[..., 1:-1] = np.where(same, mean, 0.0)
+    slopes[..., 0], slopes[..., -1] = secant[..., 0], secant[..., -1]
+    return _hermite(points, values, slopes)
+
+
+def _hermite(points: Array, values: Array, slopes: Array) -> Curves:
+    width = np.diff(points)
+    rise = np.diff(values, axis=-1)
+    d0, d1 = slopes[..., :-1] * width, slopes[..., 1:] * width
+    pieces = np.stack((values[..., :-1], d0, 3 * rise - 2 * d0 - d1, d0 + d1 - 2 * rise), axis=-1)
+    return Curves(points, pieces)

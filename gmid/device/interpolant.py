@@ -1,0 +1,322 @@
+"""From transformed grids to quantities at any bias inside the table.
+
+Coefficients are made when a quantity is first asked for, and kept.  Few lengths are
+collapsed first; many different ones are read from the four-dimensional splines.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from functools import cached_property
+
+import numpy as np
+
+from gmid.device.aligned import LOGARITHMIC, Grid, spline_axes
+from gmid.device.channel import saturate
+from gmid.device.collapsed import Collapsed
+from gmid.device.coordinates import (
+    bulk_coordinate,
+    bulk_offset,
+    drain_coordinate,
+    length_coordinate,
+    roll_off_coordinate,
+)
+from gmid.device.spline import Array, SplineAxis, natural_axis
+from gmid.device.stack import Stack, solve_table
+
+_KEPT = 64
+"""Collapsed splines kept for later queries."""
+
+_FEW_LENGTHS = 8
+_POINTS_PER_LENGTH = 40
+"""Collapse when no more lengths than this, or so many points for each."""
+
+ON_CURRENT = frozenset({"gm", "gmb", "noise_flicker"})
+"""Quantities that are held relative to the channel's current."""
+
+
+@dataclass(eq=False)
+class Interpolant:
+    """Splines of one device in one condition.
+
+    Parameters
+    ----------
+    grid : Grid
+        Transformed data on shifted axes.
+
+    Examples
+    --------
+    >>> from gmid.device.aligned import AlignedGrid
+    >>> from gmid.device.example import example_sweep
+    >>> spline = Interpolant(AlignedGrid(example_sweep()))
+    >>> one = np.ones(1)
+    >>> found = spline.quantities(["id", "gm"], one * 0.7e-6, one * 0.7, one * 0.6, one * 0.0)
+    >>> float((found["gm"] / found["id"])[0].round(2))
+    6.57
+    """
+
+    grid: Grid
+    _coefficients: dict[str, Array] = field(default_factory=dict, repr=False)
+    _stacks: dict[tuple[str, ...], Stack] = field(default_factory=dict, repr=False)
+    _kept: dict[tuple[tuple[str, ...], bytes], Collapsed] = field(default_factory=dict, repr=False)
+
+    @cached_property
+    def axes(self) -> tuple[SplineAxis, SplineAxis, SplineAxis, SplineAxis]:
+        """Length, vsb, vds and gate in spline coordinates."""
+        return spline_axes(self.grid)
+
+    @cached_property
+    def offset(self) -> float:
+        """Phi of the body-bias coordinate [V]."""
+        return bulk_offset(float(self.grid.sweep.vsb[0]))
+
+    @cached_property
+    def _roll_off(self) -> SplineAxis:
+        return natural_axis(roll_off_coordinate(self.grid.sweep.length))
+
+    @cached_property
+    def _thresholds(self) -> Array:
+        """Coefficients of the threshold, shape (n_length, n_vsb)."""
+        along = self._roll_off.operator @ self.grid.threshold
+        return np.asarray(along @ self.axes[1].operator.T)
+
+    def threshold_lines(self, length: Array) -> Array:
+        """Give the threshold's coefficients along vsb for some lengths.
+
+        Parameters
+        ----------
+        length : ndarray, shape (k,)
+            Channel lengths [m].
+
+        Returns
+        -------
+        ndarray, shape (k, n_vsb)
+            Coefficients [V].
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> Interpolant(AlignedGrid(example_sweep())).threshold_lines(np.array([1e-6])).shape
+        (1, 3)
+        """
+        span, place = self._roll_off.locate(roll_off_coordinate(length))
+        weights = self._roll_off.weights(span, place)
+        columns = span[:, None] + np.arange(self._roll_off.order)
+        return np.asarray(np.einsum("kl,kls->ks", weights, self._thresholds[columns]))
+
+    def threshold(self, length: Array, vsb: Array) -> Array:
+        """Give the shift of the gate axis, the constant-current threshold.
+
+        Parameters
+        ----------
+        length, vsb : ndarray, shape (n,)
+            Channel length [m] and body bias [V].
+
+        Returns
+        -------
+        ndarray, shape (n,)
+            Threshold [V].
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> spline = Interpolant(AlignedGrid(example_sweep()))
+        >>> low, high = spline.threshold(np.full(2, 1e-6), np.array([0.0, 1.0]))
+        >>> float((high - low).round(3))
+        0.25
+        """
+        lines = self.threshold_lines(length)
+        axis = self.axes[1]
+        span, place = axis.locate(bulk_coordinate(vsb, float(self.grid.sweep.vsb[0])))
+        columns = span[:, None] + np.arange(axis.order)
+        picked = np.take_along_axis(lines, columns, axis=1)
+        return np.asarray(np.einsum("ns,ns->n", picked, axis.weights(span, place)))
+
+    def stack(self, names: Sequence[str]) -> Stack:
+        """Give the four-dimensional splines of some quantities.
+
+        Parameters
+        ----------
+        names : sequence of str
+            Quantities of the sweep, or ``rest`` alone.
+
+        Returns
+        -------
+        Stack
+            Made now, or when they were first asked for.
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> Interpolant(AlignedGrid(example_sweep())).stack(["id", "gds"])
+        Stack(3 x 25 x 102 x 3, 2 quantities)
+        """
+        key = tuple(names)
+        if key not in self._stacks:
+            length, vsb, vds, gate = self.axes
+            if key == ("rest",):
+                vds = natural_axis(np.zeros(1))
+            for name in key:
+                if name not in self._coefficients:
+                    table = self.grid.table(name)
+                    self._coefficients[name] = solve_table((length, vsb, vds, gate), table)
+            if len(self._stacks) >= _KEPT:
+                self._stacks.pop(next(iter(self._stacks)))
+            together = np.stack([self._coefficients[name] for name in key], axis=-1)
+            self._stacks[key] = Stack(length, vsb, vds, gate, together)
+        return self._stacks[key]
+
+    def collapse(self, names: Sequence[str], length: Array) -> Collapsed:
+        """Give the splines of some quantities at settled lengths.
+
+        Parameters
+        ----------
+        names : sequence of str
+            Quantities of the sweep, or ``rest`` alone.
+        length : ndarray, shape (k,)
+            Channel lengths [m].
+
+        Returns
+        -------
+        Collapsed
+            Made now, or kept from an earlier query.
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> Interpolant(AlignedGrid(example_sweep())).collapse(["id"], np.array([1e-6])).lengths
+        1
+        """
+        key = (tuple(names), length.tobytes())
+        if key not in self._kept:
+            if len(self._kept) >= _KEPT:
+                self._kept.pop(next(iter(self._kept)))
+            self._kept[key] = self.stack(names).collapse(
+                length_coordinate(length), self.threshold_lines(length), self.offset
+            )
+        return self._kept[key]
+
+    def tables(
+        self, names: Sequence[str], length: Array, vgs: Array, vds: Array, vsb: Array
+    ) -> Array:
+        """Evaluate transformed quantities at scattered points.
+
+        Parameters
+        ----------
+        names : sequence of str
+            Quantities of the sweep, or ``rest`` alone.
+        length, vgs, vds, vsb : ndarray, shape (n,)
+            Channel length [m] and voltages [V], inside the table.
+
+        Returns
+        -------
+        ndarray, shape (n, names)
+            In the variables of the grid.
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> spline = Interpolant(AlignedGrid(example_sweep()))
+        >>> one = np.ones(1)
+        >>> spline.tables(["gds"], one * 1e-6, one * 0.6, one, one * 0).shape
+        (1, 1)
+        """
+        lengths, which = np.unique(length, return_inverse=True)
+        if lengths.size <= max(_FEW_LENGTHS, length.size // _POINTS_PER_LENGTH):
+            spline = self.collapse(names, lengths)
+            return spline.values(spline.locate(which, vgs, vds, vsb))
+        gate = vgs - self.threshold(length, vsb)
+        bulk = bulk_coordinate(vsb, float(self.grid.sweep.vsb[0]))
+        where = (length_coordinate(length), bulk, drain_coordinate(vds), gate)
+        return self.stack(names).values(*where)
+
+    def quantities(
+        self, names: Sequence[str], length: Array, vgs: Array, vds: Array, vsb: Array
+    ) -> dict[str, Array]:
+        """Evaluate stored quantities at scattered points.
+
+        Parameters
+        ----------
+        names : sequence of str
+            Quantities of the sweep.
+        length, vgs, vds, vsb : ndarray, shape (n,)
+            Channel length [m] and voltages [V], inside the table.
+
+        Returns
+        -------
+        dict of str to ndarray, shape (n,)
+            In SI, of one unit; with ``gm``, ``gm_over_id`` comes along.
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> spline = Interpolant(AlignedGrid(example_sweep()))
+        >>> zero = np.zeros(1)
+        >>> spline.quantities(["id"], zero + 1e-6, zero + 0.6, zero, zero)
+        {'id': array([0.])}
+        """
+        wanted = list(names)
+        if ON_CURRENT.intersection(wanted) and "id" not in wanted:
+            wanted.insert(0, "id")
+        found = self.tables(wanted, length, vgs, vds, vsb)
+        raw = {name: found[:, column] for column, name in enumerate(wanted)}
+        rest = None
+        if "id" in raw and self.grid.has_rest:
+            rest = self.tables(["rest"], length, vgs, vds, vsb)[:, 0]
+        return restore(raw, vds, rest, self.grid.condition.thermal_voltage)
+
+
+def restore(
+    raw: Mapping[str, Array], vds: Array, rest: Array | None, thermal_voltage: float
+) -> dict[str, Array]:
+    """Turn transformed quantities back into currents, conductances and densities.
+
+    Parameters
+    ----------
+    raw : mapping of str to ndarray
+        Transformed quantities.
+    vds : ndarray
+        Drain-source voltage [V].
+    rest : ndarray or None
+        Current at vds = 0 [A].
+    thermal_voltage : float
+        kT/q [V].
+
+    Returns
+    -------
+    dict of str to ndarray
+        In SI; with ``gm``, ``gm_over_id`` comes along.
+
+    Examples
+    --------
+    >>> restore({"gds": np.zeros(1)}, np.zeros(1), None, 0.026)
+    {'gds': array([1.])}
+    """
+    found: dict[str, Array] = {}
+    channel = np.exp(raw["id"]) * saturate(vds, thermal_voltage) if "id" in raw else np.zeros(1)
+    for name, values in raw.items():
+        if name == "id":
+            found[name] = channel if rest is None else channel + rest
+        elif name == "noise_flicker":
+            found[name] = np.exp(values) * channel**2
+        elif name in ON_CURRENT:
+            found[name] = values * channel
+        elif name in LOGARITHMIC:
+            found[name] = np.exp(values)
+        else:
+            found[name] = values
+    if "gm" in raw:
+        ratio = raw["gm"]
+        if rest is not None:
+            total = channel + rest
+            share = np.divide(channel, total, out=np.ones(total.shape), where=total > 0)
+            ratio = ratio * share
+        found["gm_over_id"] = ratio
+    return found

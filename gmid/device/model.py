@@ -1,0 +1,253 @@
+"""A device at settled lengths, as a circuit's solver uses it.
+
+The solver may leave the table while it iterates.  There the smooth variable of the current is
+continued in straight lines, the threshold too, and below vds = 0 drain and source change places,
+so that the current stays smooth everywhere; a mask tells which points lie inside.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from gmid.device.capacitance import assemble_matrix
+from gmid.device.channel import saturate
+from gmid.device.collapsed import OFF_SLOPE, ON_SLOPE, Place
+from gmid.device.interpolant import Interpolant, restore
+from gmid.device.spline import Array, Indices
+
+EDGE = 1e-6
+"""How far outside the table a point still counts as inside [V]: rounding of a solver."""
+
+DRAIN_SLOPE = 0.1
+"""Slope of ln id by vds above the table, for a solver on its way [1/V]."""
+
+_LARGEST_EXPONENT = 300.0
+
+_SWAPPED = np.array([0, 2, 1, 3])
+"""Gate, drain, source, bulk after drain and source have changed places."""
+
+
+@dataclass(frozen=True, eq=False)
+class SmallSignal:
+    """Small-signal values of unit transistors at their bias.
+
+    Parameters
+    ----------
+    gm, gds, gmb : ndarray, shape (...)
+        Derivatives of the current into the drain by vgs, vds and -vsb [S].
+    capacitance : ndarray, shape (..., 4, 4)
+        dQi/dVj [F] with its true signs, in the order gate, drain, source, bulk.
+    noise_thermal, noise_flicker : ndarray, shape (...)
+        Densities of the drain current's noise [A^2/Hz], the flicker part at 1 Hz; zero where
+        the table has none.
+
+    Examples
+    --------
+    >>> zero = np.zeros(2)
+    >>> SmallSignal(zero, zero, zero, np.zeros((2, 4, 4)), zero, zero).gm.shape
+    (2,)
+    """
+
+    gm: Array
+    gds: Array
+    gmb: Array
+    capacitance: Array
+    noise_thermal: Array
+    noise_flicker: Array
+
+
+@dataclass(frozen=True, eq=False)
+class DeviceModel:
+    """A device at one or more lengths; `Device.model` makes it.
+
+    Parameters
+    ----------
+    interpolant : Interpolant
+        The splines.
+    length : ndarray, shape (k,)
+        Channel lengths [m].
+
+    Examples
+    --------
+    >>> from gmid.device.device import Device
+    >>> from gmid.device.example import example_sweep
+    >>> model = Device(example_sweep()).model(1e-6)
+    >>> id, by_vgs, by_vds, by_vsb, inside = model.current_and_derivatives(0.6, 0.9, 0.0)
+    >>> bool(inside), float(by_vgs / id) < 38.7
+    (True, True)
+    """
+
+    interpolant: Interpolant
+    length: Array
+
+    def current_and_derivatives(
+        self, vgs: ArrayLike, vds: ArrayLike, vsb: ArrayLike, which: ArrayLike = 0
+    ) -> tuple[Array, Array, Array, Array, NDArray[np.bool_]]:
+        """Evaluate the current into the drain and its derivatives, inside the table or not.
+
+        Parameters
+        ----------
+        vgs, vds, vsb : array_like, shape (...)
+            Voltages [V]; they broadcast.
+        which : array_like of int
+            Which of the model's lengths; broadcasts as well.
+
+        Returns
+        -------
+        id : ndarray, shape (...)
+            Drain current [A], negative below vds = 0.
+        by_vgs, by_vds, by_vsb : ndarray, shape (...)
+            Its exact derivatives [S].
+        inside : ndarray of bool, shape (...)
+            Where the table covers the point.
+
+        Examples
+        --------
+        >>> from gmid.device.device import Device
+        >>> from gmid.device.example import example_sweep
+        >>> model = Device(example_sweep()).model([0.5e-6, 1e-6])
+        >>> model.current_and_derivatives(0.6, 5.0, 0.0, which=[0, 1])[4]
+        array([False, False])
+        """
+        shape, index, bias = _flatten(which, vgs, vds, vsb)
+        turned, bias = _turn(bias)
+        within = self._clip(bias)
+        beyond = [here - there for here, there in zip(bias, within, strict=True)]
+        core = self.interpolant.collapse(("id",), self.length)
+        place = core.locate(index, *within, beyond[2])
+        q, *slopes = core.gradient(place)
+        gate_slope = np.where(beyond[0] < 0, OFF_SLOPE, ON_SLOPE)
+        q = q + gate_slope * beyond[0] + DRAIN_SLOPE * beyond[1]
+        slopes[0] = np.where(beyond[0] == 0, slopes[0], gate_slope)
+        slopes[1] = np.where(beyond[1] == 0, slopes[1], DRAIN_SLOPE)
+        found = self._current(q, slopes, bias[1])
+        if self.interpolant.grid.has_rest:
+            found += self._rest(place, beyond[0])
+        found = _turn_back(found, turned)
+        inside = np.all([np.abs(far) <= EDGE for far in beyond], axis=0)
+        id, by_vgs, by_vds, by_vsb = (row.reshape(shape) for row in found)
+        return id, by_vgs, by_vds, by_vsb, inside.reshape(shape)
+
+    def small_signal(
+        self, vgs: ArrayLike, vds: ArrayLike, vsb: ArrayLike, which: ArrayLike = 0
+    ) -> SmallSignal:
+        """Read conductances, capacitances and noise from their own tables.
+
+        Parameters
+        ----------
+        vgs, vds, vsb : array_like, shape (...)
+            Voltages [V] inside the table, below vds = 0 with drain and source changed; a
+            point outside takes the values at the edge.
+        which : array_like of int
+            Which of the model's lengths.
+
+        Returns
+        -------
+        SmallSignal
+            Of one unit.
+
+        Raises
+        ------
+        UnknownName
+            If the table lacks a conductance, or capacitances of the matrix.
+
+        Examples
+        --------
+        >>> from gmid.device.device import Device
+        >>> from gmid.device.example import example_sweep
+        >>> model = Device(example_sweep()).model(1e-6)
+        >>> model.small_signal(0.6, 0.9, 0.0)  # doctest: +ELLIPSIS
+        Traceback (most recent call last):
+        ...
+        gmid.errors.UnknownName: nmos tt/27 stores only the capacitances cgg: the whole matrix ...
+        """
+        sweep = self.interpolant.grid.sweep
+        assemble_matrix(sweep)
+        shape, index, bias = _flatten(which, vgs, vds, vsb)
+        turned, bias = _turn(bias)
+        within = self._clip(bias)
+        names = ["id", *(name for name in sweep.values if name not in ("id", "vth", "vdsat"))]
+        spline = self.interpolant.collapse(names, self.length)
+        table = spline.values(spline.locate(index, *within))
+        raw = {name: table[:, column] for column, name in enumerate(names)}
+        found = restore(raw, within[1], None, self.interpolant.grid.condition.thermal_voltage)
+        slopes = np.stack((found["id"], found["gm"], found["gds"], -found["gmb"]))
+        _, gm, gds, by_vsb = _turn_back(slopes, turned)
+        matrix = assemble_matrix(sweep, found)
+        swapped = matrix[:, _SWAPPED][:, :, _SWAPPED]
+        matrix = np.where(turned[:, None, None], swapped, matrix)
+        zero = np.zeros(index.size)
+        noise = [found.get(name, zero) for name in ("noise_thermal", "noise_flicker")]
+        return SmallSignal(
+            gm.reshape(shape), gds.reshape(shape), -by_vsb.reshape(shape),
+            matrix.reshape(*shape, 4, 4), *(part.reshape(shape) for part in noise),
+        )  # fmt: skip
+
+    def _clip(self, bias: tuple[Array, Array, Array]) -> tuple[Array, Array, Array]:
+        sweep = self.interpolant.grid.sweep
+        axes = (sweep.vgs, sweep.vds, sweep.vsb)
+        vgs, vds, vsb = (
+            np.clip(values, axis[0], axis[-1]) for values, axis in zip(bias, axes, strict=True)
+        )
+        return vgs, vds, vsb
+
+    def _current(self, q: Array, slopes: list[Array], vds: Array) -> Array:
+        """Turn q and its derivatives into the channel's current and derivatives."""
+        thermal_voltage = self.interpolant.grid.condition.thermal_voltage
+        peak = np.exp(np.minimum(q, _LARGEST_EXPONENT))
+        current = peak * saturate(vds, thermal_voltage)
+        found = np.stack((current, *(current * slope for slope in slopes)))
+        found[2] += peak * np.exp(-vds / thermal_voltage) / thermal_voltage
+        return found
+
+    def _rest(self, place: Place, past: Array) -> Array:
+        """Give the current at vds = 0, which does not know vds, and its derivatives."""
+        drains, gates = self.interpolant.axes[2].size, self.interpolant.axes[3].size
+        line, gate = place.first // (drains * gates), place.first % gates
+        one, none = np.ones((gate.size, 1)), np.zeros((gate.size, 1))
+        steep = np.where(place.beyond[:, None] == 0, place.gate_slope, 0.0)
+        found = self.interpolant.collapse(("rest",), self.length).gradient(
+            Place(
+                line * gates + gate, one, place.gate, place.vsb, none, steep, place.vsb_slope,
+                place.threshold_slope, np.zeros(gate.size),
+            )
+        )  # fmt: skip
+        rest = np.stack(found)
+        rest[1, past != 0] = 0.0
+        return rest
+
+
+def _flatten(
+    which: ArrayLike, vgs: ArrayLike, vds: ArrayLike, vsb: ArrayLike
+) -> tuple[tuple[int, ...], Indices, tuple[Array, Array, Array]]:
+    voltages = [np.asarray(values, dtype=np.float64) for values in (vgs, vds, vsb)]
+    index, *bias = np.broadcast_arrays(np.asarray(which, dtype=np.intp), *voltages)
+    flat = tuple(values.ravel() for values in bias)
+    return index.shape, index.ravel(), (flat[0], flat[1], flat[2])
+
+
+def _turn(
+    bias: tuple[Array, Array, Array],
+) -> tuple[NDArray[np.bool_], tuple[Array, Array, Array]]:
+    """Call the lower of drain and source the source."""
+    vgs, vds, vsb = bias
+    turned = vds < 0
+    if not turned.any():
+        return turned, bias
+    drop = np.where(turned, vds, 0.0)
+    return turned, (vgs - drop, np.abs(vds), vsb + drop)
+
+
+def _turn_back(found: Array, turned: NDArray[np.bool_]) -> Array:
+    """Undo `_turn`: rows are the current and its derivatives by vgs, vds, vsb.
+
+    With ``id(vgs, vds, vsb) = -id'(vgs - vds, -vds, vsb + vds)`` the chain rule gives them.
+    """
+    if not turned.any():
+        return found
+    current, by_vgs, by_vds, by_vsb = found
+    back = np.stack((-current, -by_vgs, by_vgs + by_vds - by_vsb, -by_vsb))
+    return np.where(turned, back, found)

@@ -1,0 +1,96 @@
+"""Documents: TOML files with typed fields, and every fault with its file, line and key.
+
+The only room that knows the TOML reader and the model library.  The latter is loaded with
+this package, so what builds on it is itself imported inside the commands that need it.
+"""
+
+from __future__ import annotations
+
+from pydantic import Field, field_validator, model_validator
+
+from gmid.documents.fields import (
+    AUTO,
+    Area,
+    Capacitance,
+    CapacitanceDensity,
+    CapacitancePerResistance,
+    ConditionText,
+    Conductance,
+    Count,
+    Current,
+    Decibel,
+    Degrees,
+    Flag,
+    Frequency,
+    Length,
+    Level,
+    MatchingRatio,
+    MatchingVoltage,
+    Model,
+    NoiseDensity,
+    Number,
+    Parsed,
+    PositiveVoltage,
+    Power,
+    Ratio,
+    Resistance,
+    SlewRate,
+    SupplyLevel,
+    TemperatureC,
+    Text,
+    Time,
+    Unit,
+    Voltage,
+    read_condition,
+    read_level,
+)
+from gmid.documents.locate import KeyPath, dotted, locate_keys
+from gmid.documents.read import Document, parse_document, read_document
+from gmid.documents.write import write_document
+
+__all__ = [
+    "AUTO",
+    "Area",
+    "Capacitance",
+    "CapacitanceDensity",
+    "CapacitancePerResistance",
+    "ConditionText",
+    "Conductance",
+    "Count",
+    "Current",
+    "Decibel",
+    "Degrees",
+    "Document",
+    "Field",
+    "Flag",
+    "Frequency",
+    "KeyPath",
+    "Length",
+    "Level",
+    "MatchingRatio",
+    "MatchingVoltage",
+    "Model",
+    "NoiseDensity",
+    "Number",
+    "Parsed",
+    "PositiveVoltage",
+    "Power",
+    "Ratio",
+    "Resistance",
+    "SlewRate",
+    "SupplyLevel",
+    "TemperatureC",
+    "Text",
+    "Time",
+    "Unit",
+    "Voltage",
+    "dotted",
+    "field_validator",
+    "locate_keys",
+    "model_validator",
+    "parse_document",
+    "read_condition",
+    "read_document",
+    "read_level",
+    "write_document",
+]

@@ -1,0 +1,1 @@
+"""Simulator text to checked, gridded sweeps."""

@@ -1,0 +1,363 @@
+"""A bounded stream of UTF-8 bytes: unpacks, transcodes, counts lines and finds the checksum.
+
+It is handed to the number reader as it is, so that every byte is read once and no more than
+a block is held.
+"""
+
+from __future__ import annotations
+
+import codecs
+import hashlib
+import zlib
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from typing import BinaryIO, Protocol
+
+import numpy as np
+
+from gmid.errors import DataFault, GmidError
+
+BLOCK = 1 << 20
+HEAD = 1 << 16
+_RATIO_FROM = 1 << 24
+
+
+@dataclass(frozen=True)
+class Limits:
+    """Bounds on what is read from one file.
+
+    Parameters
+    ----------
+    unpacked : int
+        Largest unpacked size in bytes.
+    ratio : float
+        Largest ratio of unpacked to packed bytes, judged from 16 MB on.
+    line : int
+        Longest line in bytes.
+
+    Examples
+    --------
+    >>> Limits().line
+    1000000
+    """
+
+    unpacked: int = 4 << 30
+    ratio: float = 200.0
+    line: int = 1_000_000
+
+
+def count_lines(block: bytes) -> int:
+    r"""Count line feeds, several times faster than ``bytes.count`` where lines are short.
+
+    Parameters
+    ----------
+    block : bytes
+        Any bytes.
+
+    Returns
+    -------
+    int
+        Number of line feeds.
+
+    Examples
+    --------
+    >>> count_lines(b"a\nb\n")
+    2
+    """
+    return int(np.count_nonzero(np.frombuffer(block, dtype=np.uint8) == 10))
+
+
+class Readable(Protocol):
+    """What gives bytes and can be closed."""
+
+    def read(self, size: int = -1, /) -> bytes:
+        """Read at most `size` bytes.
+
+        Parameters
+        ----------
+        size : int
+            Bytes wanted; all when negative.
+        """
+        ...
+
+    def close(self) -> None:
+        """Close it."""
+
+
+class RawTap:
+    """The bytes of a file as stored, hashed while they pass.
+
+    Parameters
+    ----------
+    file : binary file
+        Open at its start.
+    hashed : bool
+        Whether to find the checksum.
+
+    Examples
+    --------
+    >>> import io
+    >>> tap = RawTap(io.BytesIO(b"abc"), hashed=True)
+    >>> tap.read(10), tap.finish()[:8]
+    (b'abc', 'ba7816bf')
+    """
+
+    def __init__(self, file: BinaryIO, *, hashed: bool) -> None:
+        self._file = file
+        self._hash = hashlib.sha256() if hashed else None
+        self.count = 0
+
+    def read(self, size: int = -1) -> bytes:
+        """Read at most `size` bytes.
+
+        Parameters
+        ----------
+        size : int
+            Bytes wanted; all when negative.
+
+        Returns
+        -------
+        bytes
+            Empty at the end.
+        """
+        data = self._file.read(size)
+        self.count += len(data)
+        if self._hash is not None:
+            self._hash.update(data)
+        return data
+
+    def finish(self) -> str | None:
+        """Read what is left and give the checksum.
+
+        Returns
+        -------
+        str or None
+            SHA-256 in hexadecimal, or None when it was not asked for.
+        """
+        if self._hash is None:
+            return None
+        while self.read(BLOCK):
+            pass
+        return self._hash.hexdigest()
+
+    def close(self) -> None:
+        """Close the file."""
+        self._file.close()
+
+
+class ByteStream:
+    """Reads a file as UTF-8 bytes with bounded memory.
+
+    Parameters
+    ----------
+    unpacked : Readable
+        Gives the unpacked bytes.
+    tap : RawTap
+        The stored bytes below it.
+    name : str
+        The file, for messages.
+    encoding : str
+        Encoding of the unpacked bytes.
+    packed : bool
+        Whether the two differ.
+    limits : Limits
+        Bounds.
+    carriage : bool
+        Whether lines end in carriage returns alone.
+    on_digest : callable
+        Called with the checksum at the end of the file.
+
+    Attributes
+    ----------
+    line : int
+        Line feeds handed out so far.
+    tail : bytes
+        The end of what was handed out, at least the last block.
+    fault : GmidError or None
+        What was raised while reading, for callers that lose exceptions on the way.
+    """
+
+    mode = "r"
+
+    def __init__(
+        self, unpacked: Readable, tap: RawTap, *, name: str, encoding: str = "utf-8",
+        packed: bool = False, limits: Limits | None = None, carriage: bool = False,
+        on_digest: Callable[[str], None] | None = None,
+    ) -> None:  # fmt: skip
+        self._unpacked, self._tap, self._name = unpacked, tap, name
+        self._packed, self._limits = packed, limits or Limits()
+        self._encoding, self._carriage = encoding, carriage
+        self._decoder = None
+        if encoding not in ("utf-8", "latin-1"):
+            self._decoder = codecs.getincrementaldecoder(encoding)()
+        self._on_digest = on_digest
+        self._total = self._run = self._seen_lines = 0
+        self._pending = b""
+        self._at = 0
+        self._ended = False
+        self._fresh = -1
+        self.line = 0
+        self.tail = b""
+        self.fault: GmidError | None = None
+
+    def read(self, size: int = -1) -> bytes:
+        """Hand out the next block.
+
+        Parameters
+        ----------
+        size : int
+            Ignored but for being there: blocks have the size that suits the reader.
+
+        Returns
+        -------
+        bytes
+            Empty at the end of the file.
+
+        Raises
+        ------
+        DataFault
+            If a bound is broken or the file turns out damaged or binary.
+        """
+        block = self._pending[self._at :] or self._next_block()
+        self._pending, self._at = b"", 0
+        if block:
+            self.line += self._fresh if self._fresh >= 0 else count_lines(block)
+            self._fresh = -1
+            self.tail = block if len(block) >= HEAD else (self.tail + block)[-2 * HEAD :]
+        return block
+
+    def readline(self) -> bytes:
+        """Hand out one line with its line feed.
+
+        Returns
+        -------
+        bytes
+            Empty at the end of the file.
+        """
+        parts = []
+        while True:
+            if self._at >= len(self._pending):
+                self._pending, self._at = self._next_block(), 0
+                self._fresh = -1
+            cut = self._pending.find(b"\n", self._at) + 1
+            begin, self._at = self._at, cut or len(self._pending)
+            parts.append(self._pending[begin : self._at])
+            if cut or not self._pending:
+                break
+        line = b"".join(parts)
+        self.line += line.endswith(b"\n")
+        return line
+
+    def push_back(self, data: bytes) -> None:
+        """Take back the end of what was handed out.
+
+        Parameters
+        ----------
+        data : bytes
+            Will be handed out next.
+        """
+        self._pending, self._at = data + self._pending[self._at :], 0
+        self.line -= count_lines(data)
+
+    def close(self) -> None:
+        """Close the file."""
+        self._unpacked.close()
+        self._tap.close()
+
+    def __enter__(self) -> ByteStream:
+        """Give the stream itself."""
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        """Close the file."""
+        self.close()
+
+    def __iter__(self) -> Iterator[bytes]:
+        """Iterate over the lines."""
+        return iter(self.readline, b"")
+
+    def _next_block(self) -> bytes:
+        if self._ended:
+            return b""
+        try:
+            block = self._load()
+        except GmidError as error:
+            self.fault = error
+            raise
+        if not block:
+            self._ended = True
+            digest = self._tap.finish()
+            if digest is not None and self._on_digest is not None:
+                self._on_digest(digest)
+        return block
+
+    def _load(self) -> bytes:
+        """Read, unpack, check and transcode until there is something to hand out."""
+        while True:
+            try:
+                data = self._unpacked.read(BLOCK)
+            except (EOFError, OSError, zlib.error) as error:
+                raise self._damaged(error) from error
+            first = self._total == 0
+            self._total += len(data)
+            self._check_size()
+            block = self._transcode(data, first=first)
+            if block:
+                self._check_block(block)
+            if block or not data:
+                return block
+
+    def _transcode(self, data: bytes, *, first: bool) -> bytes:
+        if self._decoder is not None:
+            text = self._decoder.decode(data, not data)
+            data = (text.removeprefix("\ufeff") if first else text).encode()
+        elif self._encoding == "latin-1":
+            if not data.isascii():
+                data = data.decode("latin-1").encode()
+        elif first:
+            data = data.removeprefix(codecs.BOM_UTF8)
+        return data.replace(b"\r", b"\n") if self._carriage else data
+
+    def _check_size(self) -> None:
+        limits = self._limits
+        if self._total > limits.unpacked:
+            raise DataFault(
+                f"the text is longer than {limits.unpacked} bytes"
+                f"{' when unpacked' if self._packed else ''}.",
+                where=self._name, hint="Split the sweep into several files.",
+            )  # fmt: skip
+        ratio = self._total / max(self._tap.count, 1)
+        if self._packed and self._total > _RATIO_FROM and ratio > limits.ratio:
+            raise DataFault(
+                f"the gzip file unpacks to more than {limits.ratio:g} times its size, "
+                "which no sweep does.", where=self._name,
+                hint="Unpack it and look at what it holds.",
+            )  # fmt: skip
+
+    def _check_block(self, block: bytes) -> None:
+        if b"\0" in block:
+            line = self._seen_lines + block.count(b"\n", 0, block.index(b"\0")) + 1
+            raise DataFault(
+                "a NUL byte stands here: the file is damaged or binary.",
+                where=f"{self._name}:{line}", hint="Write or copy it again.",
+            )  # fmt: skip
+        cut = block.find(b"\n")
+        self._run += cut if cut >= 0 else len(block)
+        if self._run > self._limits.line:
+            raise DataFault(
+                f"the line is longer than {self._limits.line} bytes.",
+                where=f"{self._name}:{self._seen_lines + 1}",
+                hint="This is no table of rows; check what the file holds.",
+            )
+        if cut >= 0:
+            self._run = len(block) - block.rfind(b"\n") - 1
+            self._fresh = count_lines(block)
+            self._seen_lines += self._fresh
+        else:
+            self._fresh = 0
+
+    def _damaged(self, error: Exception) -> DataFault:
+        what = "the gzip file is damaged or cut off" if self._packed else "the file cannot be read"
+        return DataFault(
+            f"{what}: {str(error).rstrip('.').lower()}.", where=self._name, hint="Copy it again."
+        )

@@ -1,0 +1,201 @@
+"""Reads the rows of a table: fast with the C reader, and slowly with care when that fails.
+
+The fast way takes plain floats only and lets nothing doubtful pass; whatever it does not
+like is read again line by line, which either understands it (suffixes, comments between
+rows) or names every line at fault.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass, field
+from functools import partial
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gmid.sweep.bytestream import ByteStream
+from gmid.sweep.readers.scan import Shape
+from gmid.sweep.readers.segments import (
+    ColumnStore,
+    cut_segments,
+    parse_in_order,
+    read_frame,
+)
+from gmid.sweep.source import TextSource
+
+_FORTRAN = bytes.maketrans(b"dD", b"eE")
+_LAST_NUMBER = re.compile(rb"[+-]?(\d*)[.,]?(\d*)(?:[eEdD][+-]?(\d*))?$")
+
+
+@dataclass(frozen=True, eq=False)
+class Rows:
+    """The values of a table, column by column.
+
+    Parameters
+    ----------
+    values : list of ndarray, shape (n_rows,)
+        float64, or str for columns of words.
+    first_line : int
+        Line of the first row.
+    lines : ndarray of int, shape (n_rows,), optional
+        Line of each row, where they do not follow each other.
+    notes : list of str
+        What was read in one way though another is possible.
+    """
+
+    values: list[NDArray[Any]]
+    first_line: int
+    lines: NDArray[np.int64] | None = None
+    notes: list[str] = field(default_factory=list)
+
+
+def read_rows_fast(source: TextSource, shape: Shape) -> Rows | None:
+    r"""Read plain rows with the C reader.
+
+    Parameters
+    ----------
+    source : TextSource
+        The file.
+    shape : Shape
+        How the rows are written.
+
+    Returns
+    -------
+    Rows or None
+        None when anything is not as it should be; then `careful.read_rows_slowly` knows more.
+
+    Raises
+    ------
+    DataFault
+        If the stream itself is at fault.
+
+    Examples
+    --------
+    >>> from gmid.sweep.source import open_bytes
+    >>> from gmid.sweep.readers.scan import scan_lines
+    >>> source = open_bytes(b"vgs,id\n0.5,1.0\n0.6,2.0\n", name="a.csv")
+    >>> shape = scan_lines(source.head_lines(), ",", suffixes="si")
+    >>> read_rows_fast(source, shape).values
+    [array([0.5, 0.6]), array([1., 2.])]
+    """
+    if (shape.decimal_comma or shape.fortran) and shape.text:
+        return None
+    store = ColumnStore(shape.width)
+    parse = partial(_parse, shape=shape, options=_options(shape))
+    with source.stream() as stream:
+        while stream.line < shape.first_line - 1:
+            if not stream.readline():
+                return None
+        for columns in parse_in_order(cut_segments(stream.read), parse):
+            if columns is None:
+                return None
+            store.append(columns)
+        if store.rows == 0 or has_cut_number(stream.tail, shape.separator):
+            return None
+        uniform = _count_lines(stream) - (shape.first_line - 1) == store.rows
+    lines = None
+    if not uniform:
+        numbers = [number for number, text in source.lines(shape.first_line) if text.strip()]
+        if len(numbers) != store.rows:
+            return None
+        lines = np.array(numbers, dtype=np.int64)
+    first = shape.first_line if lines is None else int(lines[0])
+    return Rows(store.join(), first, lines)
+
+
+def has_cut_number(tail: bytes, separator: str | None) -> bool:
+    r"""Tell whether a text seems to end inside a number.
+
+    Parameters
+    ----------
+    tail : bytes
+        The end of the text, several rows if there are as many.
+    separator : str or None
+        What separates columns, None for blanks.
+
+    Returns
+    -------
+    bool
+        True when there is no line feed at the end and the last number has fewer digits than
+        all those above it, which agree among themselves, or an exponent shorter than theirs.
+
+    Examples
+    --------
+    >>> has_cut_number(b"1.25e-06\n1.50e-06\n1.75e-0", None)
+    True
+    >>> has_cut_number(b"1.25e-06\n1.5e-06", None)
+    False
+    """
+    if not tail.strip() or tail.endswith((b"\n", b"\r")):
+        return False
+    lines = [line for line in tail.splitlines()[-30:] if line.strip()]
+    mark = None if separator is None else separator.encode()
+    words = [line.rstrip().split(mark)[-1].strip(b' "') for line in lines]
+    matches = [_LAST_NUMBER.match(word) for word in words]
+    shapes = [None if match is None else tuple(map(_length, match.groups())) for match in matches]
+    last, above = shapes[-1], [shape for shape in shapes[1:-1] if shape is not None]
+    if last is None or not above:
+        return False
+    exponents = {shape[2] for shape in above}
+    if len(exponents) == 1 and last[2] < min(exponents):
+        return True
+    return len(above) > 2 and len({shape[1:] for shape in above}) == 1 and last[1:] < above[0][1:]
+
+
+def _length(group: bytes | None) -> int:
+    return -1 if group is None else len(group)
+
+
+def _options(shape: Shape) -> dict[str, Any]:
+    """Options of the C reader for a shape."""
+    kinds: Any = "float64"
+    words = set(shape.text) | ({shape.fields - 1} if shape.trailing else set())
+    if words:
+        kinds = {j: "category" if j in words else "float64" for j in range(shape.fields)}
+    return {
+        "sep": r"\s+" if shape.separator is None else shape.separator,
+        "names": list(range(shape.fields)),
+        "index_col": False,
+        "dtype": kinds,
+        "quoting": 3 if shape.separator is None else 0,
+    }
+
+
+def _parse(text: bytes, *, shape: Shape, options: dict[str, Any]) -> list[NDArray[Any]] | None:
+    """Read one segment; None when a row or value is not plain."""
+    if shape.decimal_comma:
+        if b"." in text:
+            return None
+        text = text.replace(b",", b".")
+    if shape.fortran:
+        text = text.translate(_FORTRAN)
+    if text.isspace():
+        return [np.empty(0, str if j in shape.text else float) for j in range(shape.width)]
+    frame = read_frame(text, **options)
+    if frame is None:
+        return None
+    columns: list[NDArray[Any]] = []
+    for j in range(shape.width):
+        if j in shape.text:
+            words = np.char.strip(np.asarray(frame[j].cat.categories, dtype=str))
+            if (words == "").any():
+                return None
+            columns.append(words[frame[j].cat.codes.to_numpy()])
+            continue
+        values = frame[j].to_numpy()
+        if not np.isfinite(values).all():
+            return None
+        columns.append(values.copy())
+    if shape.trailing and any(frame[shape.fields - 1].cat.categories != ""):
+        return None
+    return columns
+
+
+def _count_lines(stream: ByteStream) -> int:
+    """Lines of the whole file, those left blank at its end not counted."""
+    tail = stream.tail
+    body = tail.rstrip()
+    blank = tail.count(b"\n", len(body))
+    return stream.line - blank + (1 if body else 0)

@@ -1,0 +1,1 @@
+"""Device tables: sweeps of a process in one HDF5 file."""

@@ -29,13 +29,22 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from gmid.device.opening import open_table as open_table
+    from gmid.request.reading import read_request as read_request
+    from gmid.tasks.checking import check as check
+    from gmid.tasks.demanding import demands as demands
 
 __all__ = [
+    "check",
+    "demands",
     "open_table",
+    "read_request",
 ]
 
 _HOMES = {
+    "check": "gmid.tasks.checking",
+    "demands": "gmid.tasks.demanding",
     "open_table": "gmid.device.opening",
+    "read_request": "gmid.request.reading",
 }
 """Module of each public name: loaded when the name is first used, so that start-up stays light."""
 

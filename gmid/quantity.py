@@ -275,7 +275,8 @@ def format_quantity(value: float, unit: str, *, digits: int = 4) -> str:
     if unit in ("dB", "deg", "1/V", "A^2/Hz", "m^2", "") or value == 0 or value != value:
         return f"{value:.{digits}g} {unit}".rstrip()
     rounded = float(f"{value:.{digits}g}")
-    power = next((p for p in sorted(_EXPONENTS, reverse=True) if abs(rounded) >= 10.0**p), -18)
+    powers = [p for p in sorted(_EXPONENTS, reverse=True) if p or unit != "m"]  # never "1 m"
+    power = next((p for p in powers if abs(rounded) >= 10.0**p), -18)
     scaled = float(f"{value:.{digits + 3}g}") / 10.0**power
     text = f"{scaled:.{digits}g}"
     if "e+" in text:

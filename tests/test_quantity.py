@@ -7,7 +7,15 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from gmid.errors import DataFault
-from gmid.quantity import PREFIXES, UNIT_WORDS, format_quantity, parse_quantity, unit_power
+from gmid.quantity import (
+    PREFIXES,
+    UNIT_WORDS,
+    choose_prefix,
+    format_quantity,
+    parse_quantities,
+    parse_quantity,
+    unit_power,
+)
 
 
 @pytest.mark.parametrize(
@@ -140,3 +148,57 @@ def test_unit_power_of_a_foreign_unit_is_none() -> None:
     assert unit_power("uA", "V") is None
     assert unit_power("fF/um2", "F/m^2") == -3
     assert unit_power("fF/um", "F/m^2") is None
+
+
+@pytest.mark.parametrize(
+    ("text", "unit", "values"),
+    [
+        ("0.6", "V", [0.6]),
+        ("180n, 0.5u,1 um", "m", [1.8e-07, 5e-07, 1e-06]),
+        ("0:0.7:0.1", "V", [0.0, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7]),
+        ("0.18u:0.3u:60n", "m", [1.8e-07, 2.4e-07, 3e-07]),
+        ("25:5:-10", "1/V", [25.0, 15.0, 5.0]),
+        ("1,2:4:1", "", [1.0, 2.0, 3.0, 4.0]),
+        ("-40:125:165", "degC", [-40.0, 125.0]),
+        ("1:1:5", "V", [1.0]),
+    ],
+)
+def test_lists_and_ranges(text, unit, values):
+    assert parse_quantities(text, unit) == values
+
+
+@pytest.mark.parametrize(
+    ("text", "message"),
+    [
+        ("0:1:0.3", "does not reach 1 in whole steps of 0.3"),
+        ("5:25:-5", "does not reach 25"),
+        ("0:1:0", "does not reach 1"),
+        ("0:1", "is not a range"),
+        ("0:1:2:3", "is not a range"),
+        ("1,,2", "expected a number in V, found ''"),
+        ("0:1:1e-9", "means 1000000001 values"),
+        ("0:1:1m A", "expected a number in V"),
+    ],
+)
+def test_wrong_lists_and_ranges(text, message):
+    with pytest.raises(DataFault, match="--vds: ") as caught:
+        parse_quantities(text, "V", where="--vds")
+    assert message in str(caught.value)
+
+
+@given(st.integers(-(10**6), 10**6), st.integers(1, 10**4), st.integers(0, 50), st.integers(-15, 3))
+def test_ranges_are_the_decimals_written(start, step, count, power):
+    stop = start + count * step
+    values = parse_quantities(f"{start}e{power}:{stop}e{power}:{step}e{power}", "V")
+    assert values == [float(f"{start + i * step}e{power}") for i in range(count + 1)]
+
+
+def test_one_prefix_for_many():
+    assert choose_prefix([1e-9, 999e-6, 0.0, float("nan"), None]) == ("u", -6)
+    assert choose_prefix([1e3]) == ("k", 3)
+    assert choose_prefix([999.9999999999]) == ("k", 3)
+    assert choose_prefix([1e-30]) == ("a", -18)
+
+
+def test_a_metre_is_written_so_that_it_can_be_read():
+    assert parse_quantity(format_quantity(1.0, "m"), "m") == 1.0

@@ -49,8 +49,6 @@ def test_checksum_without_reading(tmp_path: Path) -> None:
     [
         (b"", "is empty"), (b" \n\n\t\n", "nothing but blanks"), (b"\x00\x01\x02abc\x00", "binary"),
         (b"PK\x03\x04zip", "zip archive"), (bytes(range(1, 30)) * 20, "binary"),
-        (b"Title: a\nPlotname: dc\nFlags: real\nVariables:\n\t0\tv\tvoltage\nBinary:\n\x00\x01",
-         "binary raw"),
         (gzip.compress(TEXT.encode(), mtime=0)[:20], "damaged or cut off"),
         (b"\x1f\x8b not gzip at all", "damaged or cut off"),
         (gzip.compress(b"", mtime=0), "holds nothing"),

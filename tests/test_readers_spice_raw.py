@@ -200,8 +200,30 @@ def test_header_faults(tmp_path: Path) -> None:
         read(tmp_path, plot(ROWS).replace("No. Variables: 3", "No. Variables: 4"))
     with pytest.raises(DataFault, match="expected a header line"):
         read(tmp_path, plot(ROWS).replace("Flags: real", "Flags: real\nrubbish"))
-    with pytest.raises(DataFault, match="binary"):
-        read(tmp_path, plot(ROWS).replace("Values:", "Binary:"))
+
+
+def test_binary_sibling(tmp_path: Path) -> None:
+    file = tmp_path / "a.raw"
+    head = plot([], points="3").replace("Values:", "Binary:").rstrip("\n") + "\n"
+    real = head.encode() + np.array(ROWS, dtype="<f8").tobytes()
+    pairs = np.array(ROWS) * (1 + 2j)
+    both = real + head.replace("real", "complex").encode() + pairs.astype("<c16").tobytes()
+    file.write_bytes(both)
+    first, second = read_text(open_source(file, name="a.raw"))
+    assert values(first) == values(read(tmp_path, plot(ROWS), name="b.raw")[0])
+    assert values(second) == [list(column) for column in pairs.T]
+    assert first.where(2) == "a.raw: point 2"
+    for data, words in (
+        (real[:-5], "found 67 bytes"),
+        (real[:-8] + b"\0\0\0\0\0\0\xf8\x7f", "not finite at point 2"),
+        (real + b"more", "expected a header line|no 'Values:' line"),
+        (real.replace(b"real", b"real unpadded"), "unpadded"),
+    ):  # fmt: skip
+        file.write_bytes(data)
+        with pytest.raises(DataFault, match=words):
+            read_text(open_source(file, name="a.raw"))
+    file.write_bytes(real.replace(b"No. Points: 3", b"No. Points: 0"))
+    assert values(read_text(open_source(file, name="a.raw"))[0]) == values(first)
 
 
 def test_long_plots_cross_segments(tmp_path: Path) -> None:

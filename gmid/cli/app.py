@@ -7,7 +7,18 @@ import sys
 
 import typer
 
-from gmid.cli import charting, importing, querying, showing, starting
+from gmid.cli import (
+    charting,
+    checking,
+    filtering,
+    importing,
+    inspecting,
+    netlisting,
+    querying,
+    showing,
+    simulating,
+    starting,
+)
 from gmid.errors import GmidError, UsageFault
 
 HELP = """Size on-chip filter amplifiers from gm/Id tables.
@@ -32,10 +43,15 @@ def build_app() -> typer.Typer:
     app = typer.Typer(
         help=HELP, rich_markup_mode=None, pretty_exceptions_enable=False, no_args_is_help=True
     )
+    app.command("inspect")(inspecting.inspect_command)
     app.command("import")(importing.import_command)
     app.command("show")(showing.show_command)
     app.command("query")(querying.query_command)
     app.command("chart")(charting.chart_command)
+    app.command("filter")(filtering.filter_command)
+    app.command("check")(checking.check_command)
+    app.command("netlist")(netlisting.netlist_command)
+    app.command("simulate")(simulating.simulate_command)
     app.add_typer(starting.build_group(), name="new")
     return app
 

@@ -18,7 +18,7 @@ _GAP = 3
 
 
 def say(text: str) -> None:
-    """Write a note to stderr, where it does not disturb piped output.
+    """Write a note to stderr, after what stdout has had, without disturbing piped output.
 
     Parameters
     ----------
@@ -29,6 +29,7 @@ def say(text: str) -> None:
     --------
     >>> say("vsb = 0 V by default.")
     """
+    sys.stdout.flush()
     sys.stderr.write(f"{text}\n")
 
 

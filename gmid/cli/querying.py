@@ -78,13 +78,13 @@ def query_command(
 
     Example: gmid query larch180.h5 nmos --gm-over-id 5:25:5 --length 0.18u,1u --vds 0.6 --id 10u
     """
-    from gmid.device.opening import open_table
-
     texts = (length, "" if vds == "diode" else vds, vsb, vgs, gm_over_id, current_density,
              vdsat, id, gm, width, count)  # fmt: skip
     question = _read_question(texts, diode=vds == "diode")
     if as_json and as_csv:
         raise UsageFault("--json and --csv exclude each other.", hint="Give one.")
+    from gmid.device.opening import open_table
+
     devices = choose_devices(
         open_table(table), [device],
         corner=corner, temp=temp, condition=condition, interpolate=interpolate,

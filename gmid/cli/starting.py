@@ -69,7 +69,23 @@ def build_group() -> typer.Typer:
         help="Write a commented starter file.", rich_markup_mode=None, no_args_is_help=True
     )
     group.command("recipe")(recipe_command)
+    group.command("request")(request_command)
     return group
+
+
+def request_command(
+    output: Annotated[
+        Path | None, typer.Option("-o", "--output", help="File to write; stdout by default.")
+    ] = None,
+    force: Annotated[bool, typer.Option("--force", help="Replace an existing file.")] = False,
+) -> None:
+    """Write a commented request to start from.
+
+    Example: gmid new request -o my_filter.toml
+    """
+    from gmid.cli.starters import request_text
+
+    write_starter(request_text(), output, force=force)
 
 
 def recipe_command(

@@ -117,7 +117,7 @@ class AlignedGrid:
         """The channel's part of the current."""
         return Channel(self.sweep)
 
-    @property
+    @cached_property
     def has_rest(self) -> bool:
         """Whether any current flows at vds = 0."""
         return bool(np.any(self.channel.rest != 0))
@@ -206,7 +206,7 @@ class AlignedGrid:
         points, usable = drain_coordinate(own), np.moveaxis(self._conducting, 2, 3)
         lines = np.moveaxis(q, 2, 3)
         slopes = np.moveaxis(self.channel.drain_slope(), 2, 3) / drain_stretch(own)
-        if not slopes_agree(points, lines, slopes, usable):
+        if not slopes_agree(points, lines, slopes, usable, share=0.5):
             return None
         plain = cubic_curves(points, lines).slopes(np.broadcast_to(points, lines.shape))
         curves = quintic_curves(points, lines, np.where(usable, slopes, plain))
@@ -292,10 +292,7 @@ class AlignedGrid:
     def _refine(self, values: Array) -> Array:
         """Read values over the third axis, on the sweep's vds, on the finer drain axis."""
         own, fine = drain_coordinate(self.sweep.vds), drain_coordinate(self.drain)
-        if self.noisy:
-            curves = monotone_curves(own, np.moveaxis(values, 2, 3))
-        else:
-            curves = cubic_curves(own, np.moveaxis(values, 2, 3))
+        curves = cubic_curves(own, np.moveaxis(values, 2, 3))
         places = np.broadcast_to(fine, (*curves.pieces.shape[:3], fine.size))
         return np.ascontiguousarray(np.moveaxis(curves.values(places), 3, 2))
 

@@ -76,7 +76,13 @@ class Channel:
         start = int(self.begins_at_zero)
         known = current > 0 if self.begins_at_zero else current > _SMALLEST
         q = log_where(known[:, :, start:], np.maximum(current, floor)[:, :, start:])
-        q = fill_gaps(q - np.log(self.saturation[start:]))
+        q = fill_gaps(
+            fall_off(
+                q - np.log(self.saturation[start:]),
+                self.sweep.vgs,
+                1.0 / self.sweep.condition.thermal_voltage,
+            )
+        )
         return q if start == 0 else np.concatenate((self._at_zero(q), q), axis=2)
 
     def _at_zero(self, inner: Array) -> Array:
@@ -235,6 +241,37 @@ def log_where(known: NDArray[np.bool_], values: Array) -> Array:
     array([ 0., nan])
     """
     return np.asarray(np.log(values, where=known, out=np.full(values.shape, np.nan)))
+
+
+def fall_off(values: Array, vgs: Array, slope: float) -> Array:
+    """Continue logarithms of current below the first gate voltage at which any flows.
+
+    Parameters
+    ----------
+    values : ndarray, shape (..., n)
+        Logarithms, nan where no current flows.
+    vgs : ndarray, shape (n,)
+        Gate axis [V].
+    slope : float
+        Steepest that a transistor can be, q/kT [1/V].
+
+    Returns
+    -------
+    ndarray, shape (..., n)
+        With the nan before the first known value replaced by a falling line.
+
+    Examples
+    --------
+    >>> fall_off(np.array([[np.nan, -3.0, np.nan]]), np.array([0.0, 0.1, 0.2]), 20.0)
+    array([[-5., -3., nan]])
+    """
+    known = ~np.isnan(values)
+    first = np.argmax(known, axis=-1)[..., None]
+    leading = (np.arange(vgs.size) < first) & known.any(axis=-1, keepdims=True)
+    if not leading.any():
+        return values
+    line = np.take_along_axis(values, first, axis=-1) - slope * (vgs[first] - vgs)
+    return np.where(leading, np.maximum(line, np.log(_SMALLEST)), values)
 
 
 def fill_gaps(values: Array) -> Array:

@@ -22,6 +22,9 @@ OFF_SLOPE, ON_SLOPE = 10.0, 1.0
 _CHUNK = 1 << 18
 """Numbers gathered at a time, so that they stay in the cache."""
 
+_POINTS = 1024
+"""Points whose stencils are gathered at a time for the gradient."""
+
 
 @dataclass(frozen=True, eq=False)
 class Place:
@@ -105,6 +108,19 @@ class Collapsed:
         rows = lengths * spans * drains * gates - self.gate.order + 1
         return as_strided(flat, (rows, self.gate.order * step), (step * 8, 8), writeable=False)
 
+    @cached_property
+    def _leading(self) -> Array:
+        """Coefficients of the first quantity: for each place of the vsb order one block."""
+        moved = self.coefficients[..., 0].transpose(2, 0, 1, 3, 4)
+        return np.ascontiguousarray(moved).reshape(-1)
+
+    @cached_property
+    def _offsets(self) -> Indices:
+        """From a point's first coefficient to all that bear on it, in `_leading`."""
+        block = self._leading.size // self.vsb.order
+        drain, gate, bulk = np.ogrid[: self.vds.order, : self.gate.order, : self.vsb.order]
+        return np.asarray((drain * self.gate.size + gate + bulk * block).ravel())
+
     def locate(
         self, which: Indices, vgs: Array, vds: Array, vsb: Array, past: Array | None = None
     ) -> Place:
@@ -136,17 +152,17 @@ class Collapsed:
         coordinate = np.sqrt(self.offset + vsb)
         bulk, bulk_place = self.vsb.locate(coordinate)
         w_bulk, d_bulk = self.vsb.both(bulk, bulk_place)
-        d_bulk = d_bulk * (0.5 / coordinate)[:, None]
+        d_bulk = (d_bulk.T * (0.5 / coordinate)).T
         lines = self.threshold[which, bulk]
         shift, tilt = (np.einsum("ns,ns->n", lines, weights) for weights in (w_bulk, d_bulk))
         if past is not None:
             shift = shift + tilt * past
-            d_bulk = np.where(past[:, None] == 0, d_bulk, 0.0)
+            d_bulk = (d_bulk.T * (past == 0)).T
         gate_at = vgs - shift
         gate_in = np.clip(gate_at, self.gate.breaks[0], self.gate.breaks[-1])
         drain, drain_place = self.vds.locate(drain_coordinate(vds))
         w_drain, d_drain = self.vds.both(drain, drain_place)
-        d_drain = d_drain * drain_stretch(vds)[:, None]
+        d_drain = (d_drain.T * drain_stretch(vds)).T
         gate, gate_place = self.gate.locate(gate_in)
         w_gate, d_gate = self.gate.both(gate, gate_place)
         first = ((which * self.vsb.spans + bulk) * self.vds.size + drain) * self.gate.size + gate
@@ -211,18 +227,23 @@ class Collapsed:
         1.0
         """
         found = np.empty((4, place.first.size))
-        for part in self._chunks(place):
-            runs = self._gather(place, part)
-            bulk, shape = place.vsb[part], (len(runs), self.gate.order, self.vsb.order)
-            flat = np.einsum("ndk,nd->nk", runs, place.vds[part]).reshape(shape)
-            tilt = np.einsum("ndk,nd->nk", runs, place.vds_slope[part]).reshape(shape)
-            line = np.einsum("nus,nu->ns", flat, place.gate[part])
-            rise = np.einsum("nus,nu->ns", flat, place.gate_slope[part])
-            lean = np.einsum("nus,nu->ns", tilt, place.gate[part])
-            found[0, part] = np.einsum("ns,ns->n", line, bulk)
-            found[1, part] = np.einsum("ns,ns->n", rise, bulk)
-            found[2, part] = np.einsum("ns,ns->n", lean, bulk)
-            found[3, part] = np.einsum("ns,ns->n", line, place.vsb_slope[part])
+        weights = place.vds.T, place.gate.T, place.vsb.T
+        tilts = place.vds_slope.T, place.gate_slope.T, place.vsb_slope.T
+        shape = (self.vds.order, self.gate.order, self.vsb.order)
+        for start in range(0, place.first.size, _POINTS):
+            part = slice(start, start + _POINTS)
+            stencil = self._leading.take(self._offsets[:, None] + place.first[part])
+            stencil = stencil.reshape(*shape, -1)
+            drain, gate, bulk = (weight[:, part] for weight in weights)
+            flat = np.einsum("dusn,dn->usn", stencil, drain)
+            tilt = np.einsum("dusn,dn->usn", stencil, tilts[0][:, part])
+            line = np.einsum("usn,un->sn", flat, gate)
+            rise = np.einsum("usn,un->sn", flat, tilts[1][:, part])
+            lean = np.einsum("usn,un->sn", tilt, gate)
+            found[0, part] = np.einsum("sn,sn->n", line, bulk)
+            found[1, part] = np.einsum("sn,sn->n", rise, bulk)
+            found[2, part] = np.einsum("sn,sn->n", lean, bulk)
+            found[3, part] = np.einsum("sn,sn->n", line, tilts[2][:, part])
         if np.any(place.beyond):
             outer = np.where(place.beyond < 0, OFF_SLOPE, ON_SLOPE)
             found[0] += outer * place.beyond

@@ -7,11 +7,13 @@ without them a cubic spline, noisy data a monotone cubic that stays between its 
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 
-from gmid.device.spline import Array, apply_along, natural_axis
+from gmid.device.spline import Array, Indices, apply_along, natural_axis
 
 
 @dataclass(frozen=True, eq=False)
@@ -58,7 +60,21 @@ class Curves:
         >>> cubic_curves(np.arange(2.0), np.array([[0.0, 3.0]])).values(np.array([[0.5]]))
         array([[1.5]])
         """
-        return self._evaluate(x)[0]
+        if self.points.size == 1:
+            return self._flat(x)
+        beyond, cell, place, _ = self._locate(x)
+        powers = self._gather(cell)
+        value: Array = powers[-1]
+        for coefficient in powers[-2::-1]:
+            value = value * place + coefficient
+        if not beyond.any():
+            return value
+        sides = np.reshape([0, self.points.size - 2], (1,) * (cell.ndim - 1) + (2,))
+        _, slope, curve = self._expand(sides, np.array([0.0, 1.0]), np.diff(self.points)[sides])
+        slope, curve = (np.where(beyond > 0, e[..., 1:], e[..., :1]) for e in (slope, curve))
+        if not self.bend:
+            return np.asarray(value + beyond * slope)
+        return _continue(value, slope, curve, beyond)[0]
 
     def slopes(self, x: Array) -> Array:
         """Give the slope of each curve at its own places.
@@ -78,29 +94,39 @@ class Curves:
         >>> cubic_curves(np.arange(2.0), np.array([[0.0, 3.0]])).slopes(np.array([[0.5]]))
         array([[3.]])
         """
-        return self._evaluate(x)[1]
+        if self.points.size == 1:
+            return np.zeros(self._flat(x).shape)
+        beyond, cell, place, width = self._locate(x)
+        value, slope, curve = self._expand(cell, place, width)
+        return _continue(value, slope, curve, beyond)[1] if self.bend else slope
 
-    def _evaluate(self, x: Array) -> tuple[Array, Array]:
+    def _flat(self, x: Array) -> Array:
+        shape = np.broadcast_shapes((*self.pieces.shape[:-2], 1), x.shape)
+        return np.broadcast_to(self.pieces[..., 0, :1], shape)
+
+    def _locate(self, x: Array) -> tuple[Array, Indices, Array, Array]:
+        """Give the way beyond the ends, and cell, place within it and its width."""
         points = self.points
-        if points.size == 1:
-            flat = np.broadcast_to(
-                self.pieces[..., 0, :1], np.broadcast_shapes((*self.pieces.shape[:-2], 1), x.shape)
-            )
-            return flat, np.zeros(flat.shape)
         within = np.clip(x, points[0], points[-1])
         cell = np.clip(np.searchsorted(points, within, side="right") - 1, 0, points.size - 2)
-        width = (points[1:] - points[:-1])[cell]
-        place = (within - points[cell]) / width
+        width = np.diff(points)[cell]
+        return x - within, cell, (within - points[cell]) / width, width
+
+    def _gather(self, cell: Indices) -> Array:
+        """Take the coefficients of cells, the powers first."""
+        *lead, count, order = self.pieces.shape
+        first = count * np.arange(math.prod(lead)).reshape(*lead, 1)
+        picked = np.take(self.pieces.reshape(-1, order), first + cell, axis=0)
+        return np.moveaxis(picked, -1, 0)
+
+    def _expand(self, cell: Indices, place: Array, width: Array) -> tuple[Array, Array, Array]:
+        """Give values and two derivatives inside cells."""
         value = slope = curve = np.zeros(1)
-        for power in range(self.pieces.shape[-1] - 1, -1, -1):
-            coefficient = np.take_along_axis(self.pieces[..., power], cell, axis=-1)
+        for coefficient in reversed(self._gather(cell)):
             curve = curve * place + 2.0 * slope
             slope = slope * place + value
             value = value * place + coefficient
-        slope, beyond = slope / width, x - within
-        if not self.bend:
-            return value + beyond * slope, slope
-        return _continue(value, slope, curve / width**2, beyond)
+        return value, slope / width, curve / width**2
 
 
 def _continue(value: Array, slope: Array, curve: Array, beyond: Array) -> tuple[Array, Array]:
@@ -156,11 +182,20 @@ def slope_operator(points: Array) -> Array:
     array([[-0.5,  0.5],
            [-0.5,  0.5]])
     """
+    return _make_operator(np.asarray(points, dtype=np.float64).tobytes())
+
+
+@lru_cache(maxsize=32)
+def _make_operator(raw: bytes) -> Array:
+    """Make the operator of some points once, for every quantity."""
+    points = np.frombuffer(raw)
     axis = natural_axis(points)
     span, place = axis.locate(points)
     rows = np.zeros((points.size, axis.size))
     np.put_along_axis(rows, span[:, None] + np.arange(axis.order), axis.slopes(span, place), 1)
-    return np.asarray(rows @ axis.operator)
+    operator = np.asarray(rows @ axis.operator)
+    operator.flags.writeable = False
+    return operator
 
 
 def quintic_curves(points: Array, values: Array, slopes: Array) -> Curves:

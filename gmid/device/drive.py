@@ -57,6 +57,11 @@ class Drive:
             return ("id",)
         return ("gm", "id") if self.has_rest else ("gm",)
 
+    @property
+    def columns(self) -> tuple[str, ...]:
+        """The same, with the current at vds = 0 where that enters."""
+        return (*self.tables, "rest") if self.has_rest else self.tables
+
     def scale(self, value: Array) -> Array:
         """Map the drive to the variable that is solved for: currents by their logarithm.
 
@@ -110,51 +115,78 @@ class Drive:
         unit = self.interpolant.grid.sweep.unit.width if self.name == "current_density" else 1.0
         return np.asarray(np.exp(value) / unit)
 
-    def evaluate(self, values: Array, slopes: Array, factor: Array) -> tuple[Array, Array]:
-        """Compute the scaled drive and its slope from transformed quantities.
+    def values(self, columns: Array, factor: Array) -> Array:
+        """Compute the scaled drive from transformed quantities.
 
         Parameters
         ----------
-        values, slopes : ndarray, shape (..., columns)
-            Transformed quantities and their derivatives, in the order of `tables`; where
-            `has_rest`, the current at vds = 0 [A] comes last.
+        columns : ndarray, shape (..., columns)
+            Transformed quantities, in the order of `columns`.
         factor : ndarray
             Saturation factor 1 - exp(-vds/vt), broadcasting.
 
         Returns
         -------
-        value, slope : ndarray, shape (...)
-            The scaled drive and its derivative.
+        ndarray, shape (...)
+            The scaled drive.
 
         Examples
         --------
         >>> from gmid.device.aligned import AlignedGrid
         >>> from gmid.device.example import example_sweep
         >>> spline = Interpolant(AlignedGrid(example_sweep()))
-        >>> Drive("id", spline).evaluate(np.zeros((1, 1)), np.ones((1, 1)), np.ones(1))
-        (array([0.]), array([1.]))
+        >>> Drive("id", spline).values(np.zeros((1, 1)), np.ones(1))
+        array([0.])
         """
-        first, slope = values[..., 0], slopes[..., 0]
+        first = columns[..., 0]
         if self.tables == ("id",):
-            return self._current(first, slope, values[..., -1], slopes[..., -1], factor)
+            with np.errstate(divide="ignore"):
+                if not self.has_rest:
+                    return np.asarray(first + np.log(factor))
+            return np.asarray(
+                np.log(np.maximum(np.exp(first) * factor + columns[..., 1], SMALLEST))
+            )
         if not self.has_rest:
-            return first, slope
-        rest, rest_slope = values[..., 2], slopes[..., 2]
-        channel = np.exp(values[..., 1]) * factor
+            return first
+        channel = np.exp(columns[..., 1])
+        channel *= factor
+        total = channel + columns[..., 2]
+        return first * np.divide(channel, total, out=np.ones(total.shape), where=total > 0)
+
+    def slopes(self, columns: Array, slopes: Array, factor: Array) -> Array:
+        """Give the derivative of the scaled drive.
+
+        Parameters
+        ----------
+        columns, slopes : ndarray, shape (..., columns)
+            Transformed quantities and their derivatives, in the order of `columns`.
+        factor : ndarray
+            Saturation factor 1 - exp(-vds/vt), broadcasting.
+
+        Returns
+        -------
+        ndarray, shape (...)
+            The derivative of `values`.
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> spline = Interpolant(AlignedGrid(example_sweep()))
+        >>> Drive("id", spline).slopes(np.zeros((1, 1)), np.ones((1, 1)), np.ones(1))
+        array([1.])
+        """
+        slope = slopes[..., 0]
+        if not self.has_rest:
+            return slope
+        if self.tables == ("id",):
+            channel = np.exp(columns[..., 0]) * factor
+            total = np.maximum(channel + columns[..., 1], SMALLEST)
+            return np.asarray((channel * slope + slopes[..., 1]) / total)
+        first, rest = columns[..., 0], columns[..., 2]
+        channel = np.exp(columns[..., 1]) * factor
         total = channel + rest
         good = total > 0
         safe = np.where(good, total, 1.0)
-        share = np.where(good, channel / safe, 1.0)
-        tilt = channel * (slopes[..., 1] * rest - rest_slope) / safe**2
-        return first * share, slope * share + first * np.where(good, tilt, 0.0)
-
-    def _current(
-        self, q: Array, slope: Array, rest: Array, rest_slope: Array, factor: Array
-    ) -> tuple[Array, Array]:
-        """Give the logarithm of the current and its slope."""
-        if not self.has_rest:
-            with np.errstate(divide="ignore"):
-                return q + np.log(factor), slope
-        channel = np.exp(q) * factor
-        total = np.maximum(channel + rest, SMALLEST)
-        return np.log(total), (channel * slope + rest_slope) / total
+        tilt = channel * (slopes[..., 1] * rest - slopes[..., 2]) / safe**2
+        return np.where(good, slope * channel / safe + first * tilt, slope)

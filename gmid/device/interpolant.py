@@ -141,7 +141,7 @@ class Interpolant:
         Parameters
         ----------
         names : sequence of str
-            Quantities of the sweep, or ``rest`` alone.
+            Quantities of the sweep, and ``rest``; alone, that has no vds.
 
         Returns
         -------
@@ -158,15 +158,19 @@ class Interpolant:
         key = tuple(names)
         if key not in self._stacks:
             length, vsb, vds, gate = self.axes
-            if key == ("rest",):
-                vds = natural_axis(np.zeros(1))
+            alone = natural_axis(np.zeros(1))
             for name in key:
                 if name not in self._coefficients:
+                    across = alone if name == "rest" else vds
                     table = self.grid.table(name)
-                    self._coefficients[name] = solve_table((length, vsb, vds, gate), table)
+                    self._coefficients[name] = solve_table((length, vsb, across, gate), table)
+            if key == ("rest",):
+                vds = alone
+            shape = (length.size, vds.size, gate.size, vsb.size)
             if len(self._stacks) >= _KEPT:
                 self._stacks.pop(next(iter(self._stacks)))
-            together = np.stack([self._coefficients[name] for name in key], axis=-1)
+            parts = [np.broadcast_to(self._coefficients[name], shape) for name in key]
+            together = np.stack(parts, axis=-1)
             self._stacks[key] = Stack(length, vsb, vds, gate, together)
         return self._stacks[key]
 
@@ -176,7 +180,7 @@ class Interpolant:
         Parameters
         ----------
         names : sequence of str
-            Quantities of the sweep, or ``rest`` alone.
+            Quantities of the sweep, and ``rest``; alone, that has no vds.
         length : ndarray, shape (k,)
             Channel lengths [m].
 
@@ -209,7 +213,7 @@ class Interpolant:
         Parameters
         ----------
         names : sequence of str
-            Quantities of the sweep, or ``rest`` alone.
+            Quantities of the sweep, and ``rest``; alone, that has no vds.
         length, vgs, vds, vsb : ndarray, shape (n,)
             Channel length [m] and voltages [V], inside the table.
 
@@ -265,11 +269,11 @@ class Interpolant:
         wanted = list(names)
         if ON_CURRENT.intersection(wanted) and "id" not in wanted:
             wanted.insert(0, "id")
+        if "id" in wanted and self.grid.has_rest:
+            wanted.append("rest")
         found = self.tables(wanted, length, vgs, vds, vsb)
         raw = {name: found[:, column] for column, name in enumerate(wanted)}
-        rest = None
-        if "id" in raw and self.grid.has_rest:
-            rest = self.tables(["rest"], length, vgs, vds, vsb)[:, 0]
+        rest = raw.pop("rest", None)
         return restore(raw, vds, rest, self.grid.condition.thermal_voltage)
 
 

@@ -16,9 +16,9 @@ from gmid.device.drive import Drive
 from gmid.device.interpolant import Interpolant
 from gmid.device.reach import refuse_targets
 from gmid.device.roots import bracket, solve_false_position, solve_newton
-from gmid.device.spline import Array
+from gmid.device.spline import Array, Indices
 
-_CHUNK = 1024
+_CHUNK = 512
 _SAMPLES = 81
 """Points along vgs = vds at which a diode's curve is first looked at."""
 
@@ -63,8 +63,9 @@ def solve_drive(
     found = np.empty(target.size)
     low, high = np.empty(target.size), np.empty(target.size)
     scaled = drive.scale(target)
+    order = _sort_by_cell(interpolant, length, vds)
     for start in range(0, target.size, _CHUNK):
-        part = slice(start, start + _CHUNK)
+        part = order[start : start + _CHUNK]
         found[part], low[part], high[part] = _solve_chunk(
             drive, scaled[part], length[part], vds[part], vsb[part]
         )
@@ -74,16 +75,20 @@ def solve_drive(
     return found
 
 
+def _sort_by_cell(interpolant: Interpolant, length: Array, vds: Array) -> Indices:
+    """Order points so that those of one cell of length and vds lie together."""
+    along, _ = interpolant.axes[0].locate(length_coordinate(length))
+    across, _ = interpolant.axes[2].locate(drain_coordinate(vds))
+    return np.lexsort((across, along))
+
+
 def _solve_chunk(
     drive: Drive, target: Array, length: Array, vds: Array, vsb: Array
 ) -> tuple[Array, Array, Array]:
     spline, sweep = drive.interpolant, drive.interpolant.grid.sweep
     gate = spline.axes[3]
     where = (length_coordinate(length), bulk_coordinate(vsb, float(sweep.vsb[0])))
-    lines = spline.stack(drive.tables).curves(*where, drain_coordinate(vds))
-    if drive.has_rest:
-        rests = spline.stack(("rest",)).curves(*where, np.zeros(vds.size))
-        lines = np.concatenate((lines, rests), axis=-1)
+    lines = spline.stack(drive.columns).curves(*where, drain_coordinate(vds))
     factor = saturate(vds, spline.grid.condition.thermal_voltage)
     shift = spline.threshold(length, vsb)
 
@@ -95,10 +100,10 @@ def _solve_chunk(
         weights, slopes = gate.both(span, place)
         values = np.einsum("ncq,nc->nq", picked, weights)
         tilts = np.einsum("ncq,nc->nq", picked, slopes)
-        return drive.evaluate(values, tilts, factor)
+        return drive.values(values, factor), drive.slopes(values, tilts, factor)
 
     nodes = (lines[:, :-2] + 4 * lines[:, 1:-1] + lines[:, 2:]) / 6
-    curve, _ = drive.evaluate(nodes, np.zeros((1, 1, nodes.shape[-1])), factor[:, None])
+    curve = drive.values(nodes, factor[:, None])
     ends = [
         np.clip(vgs - shift, gate.breaks[0], gate.breaks[-1])
         for vgs in (sweep.vgs[0], sweep.vgs[-1])
@@ -153,11 +158,8 @@ def solve_diode(
 
     def evaluate(vgs: Array, rows: NDArray[np.intp]) -> Array:
         bias = (length[rows], vgs, vgs, vsb[rows])
-        values = interpolant.tables(drive.tables, *bias)
-        if drive.has_rest:
-            values = np.hstack((values, interpolant.tables(("rest",), *bias)))
-        found, _ = drive.evaluate(values, np.zeros(values.shape), saturate(vgs, thermal_voltage))
-        return found
+        values = interpolant.tables(drive.columns, *bias)
+        return drive.values(values, saturate(vgs, thermal_voltage))
 
     first = max(float(sweep.vgs[0]), float(sweep.vds[0]), 1e-3)
     samples = np.linspace(first, min(float(sweep.vgs[-1]), float(sweep.vds[-1])), _SAMPLES)

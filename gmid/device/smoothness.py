@@ -98,7 +98,14 @@ def is_noisy(points: Array, values: Array, usable: NDArray[np.bool_]) -> bool:
     return noise > NOISE_FLOOR and alternation > _ALTERNATION
 
 
-def slopes_agree(points: Array, values: Array, slopes: Array, usable: NDArray[np.bool_]) -> bool:
+def slopes_agree(
+    points: Array,
+    values: Array,
+    slopes: Array,
+    usable: NDArray[np.bool_],
+    *,
+    share: float = 0.9,
+) -> bool:
     """Decide whether given slopes belong to the values, within one per cent.
 
     Parameters
@@ -109,11 +116,14 @@ def slopes_agree(points: Array, values: Array, slopes: Array, usable: NDArray[np
         Lines and what should be their derivatives.
     usable : ndarray of bool, shape (..., n)
         Points to look at.
+    share : float, keyword-only
+        Share of the cells in which slopes must integrate to the values; half of them where a
+        knee may lie between two points.
 
     Returns
     -------
     bool
-        True when the slopes integrate to the values at nine of ten cells.
+        True when they do.
 
     Examples
     --------
@@ -134,4 +144,4 @@ def slopes_agree(points: Array, values: Array, slopes: Array, usable: NDArray[np
         return False
     rise = np.diff(values, axis=-1)
     mismatch = np.abs(integral - rise)[counted] / np.maximum(np.abs(rise), 0.05)[counted]
-    return bool(np.quantile(mismatch, 0.9) < _SLOPE_MISMATCH)
+    return bool(np.quantile(mismatch, share) < _SLOPE_MISMATCH)

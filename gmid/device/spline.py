@@ -18,6 +18,9 @@ Indices = NDArray[np.intp]
 _UNIFORM = np.array([[1, -3, 3, -1], [4, 0, -6, 3], [1, 3, 3, -3], [0, 0, 0, 1]]) / 6.0
 """Cubic B-spline basis on uniform knots, one row for each coefficient, by powers of t."""
 
+_FEW = 32
+"""Places up to which the least number of calls is the fastest."""
+
 
 @dataclass(frozen=True, eq=False)
 class SplineAxis:
@@ -121,6 +124,8 @@ class SplineAxis:
         >>> axis.weights(np.array([0]), np.array([0.25]))
         array([[0.75, 0.25]])
         """
+        if place.ndim == 1 and place.size > _FEW:
+            return self._weigh(span, place, slopes=False)[0]
         return self._apply(span, place[..., None] ** np.arange(self.order))
 
     def slopes(self, span: Indices, place: Array) -> Array:
@@ -167,18 +172,30 @@ class SplineAxis:
         >>> axis.both(np.array([0]), np.array([0.25]))
         (array([[0.75, 0.25]]), array([[-0.5,  0.5]]))
         """
-        powers = np.zeros((place.size, 2, self.order))
-        powers[:, 0, 0] = 1.0
-        for power in range(1, self.order):
-            powers[:, 1, power] = power * powers[:, 0, power - 1]
-            np.multiply(powers[:, 0, power - 1], place, out=powers[:, 0, power])
-        if self.uniform:
-            found = powers @ self.basis[0].T
-            found[:, 1] *= self.spans / (self.breaks[-1] - self.breaks[0])
-        else:
-            found = np.matmul(powers, self.basis.transpose(0, 2, 1)[span])
-            found[:, 1] /= (self.breaks[span + 1] - self.breaks[span])[:, None]
-        return found[:, 0], found[:, 1]
+        if place.size <= _FEW:
+            return self.weights(span, place), self.slopes(span, place)
+        return self._weigh(span, place, slopes=True)
+
+    def _weigh(self, span: Indices, place: Array, *, slopes: bool) -> tuple[Array, Array]:
+        """Run Horner's rule over all places at once, one coefficient after the other."""
+        weights = np.empty((self.order, place.size))
+        steep = np.zeros((self.order, place.size if slopes else 0))
+        shared = self.uniform or self.spans == 1
+        for column in range(self.order):
+            powers = self.basis[0, column] if shared else self.basis[:, column].T[:, span]
+            value, slope = weights[column], steep[column]
+            value[:] = powers[-1]
+            for power in range(self.order - 2, -1, -1):
+                if slopes:
+                    slope *= place
+                    slope += value
+                value *= place
+                value += powers[power]
+        if slopes and self.uniform:
+            steep *= self.spans / (self.breaks[-1] - self.breaks[0])
+        elif slopes:
+            steep /= (self.breaks[1:] - self.breaks[:-1])[span]
+        return weights.T, steep.T
 
     def _apply(self, span: Indices, powers: Array) -> Array:
         if self.uniform:

@@ -15,6 +15,9 @@ import numpy as np
 from gmid.device.collapsed import Collapsed, expand_spans
 from gmid.device.spline import Array, Indices, SplineAxis, apply_along
 
+_TOGETHER = 512
+"""Points whose weights are multiplied out at a time, so that they stay in the cache."""
+
 
 @dataclass(frozen=True, eq=False)
 class Stack:
@@ -66,14 +69,26 @@ class Stack:
         """
         axes = (self.length, self.vds, self.gate, self.vsb)
         spans, weights = _place(axes, (length, vds, gate, vsb))
+        order, starts, corners = _sort_cells(axes, spans)
+        weights = [weight[order] for weight in weights]
+        sizes = [axis.order for axis in axes]
         found = np.empty((length.size, self.coefficients.shape[-1]))
-        for members, corner in _groups(axes, spans):
+        base, outer = 0, np.empty((0, int(np.prod(sizes))))
+        for start, stop, (a, b, c, d) in zip(
+            starts, [*starts[1:], length.size], corners, strict=True
+        ):
             block = self.coefficients[
-                tuple(slice(at, at + axis.order) for at, axis in zip(corner, axes, strict=True))
-            ]
-            outer = _outer([weight[members] for weight in weights])
-            found[members] = outer @ block.reshape(outer.shape[1], -1)
-        return found
+                a : a + sizes[0], b : b + sizes[1], c : c + sizes[2], d : d + sizes[3]
+            ].reshape(outer.shape[1], -1)
+            for first in range(start, stop, _TOGETHER):
+                last = min(first + _TOGETHER, stop)
+                if last > base + len(outer):
+                    base, end = first, max(first + _TOGETHER, last)
+                    outer = _outer([weight[base:end] for weight in weights])
+                found[first:last] = outer[first - base : last - base] @ block
+        back = np.empty_like(found)
+        back[order] = found
+        return back
 
     def curves(self, length: Array, vsb: Array, vds: Array) -> Array:
         """Collapse to coefficients along the gate axis alone.
@@ -190,16 +205,24 @@ def _place(
     return [span for span, _ in located], weights
 
 
-def _groups(
+def _sort_cells(
     axes: tuple[SplineAxis, ...], spans: list[Indices]
-) -> Iterator[tuple[Indices, tuple[int, ...]]]:
-    """Yield the points of each cell together with the cell's first coefficients."""
+) -> tuple[Indices, list[int], list[list[int]]]:
+    """Sort points by cell: their order, where each cell begins in it, its first coefficients."""
     shape = tuple(axis.spans for axis in axes)
     keys = np.ravel_multi_index(tuple(spans), shape)
     order = np.argsort(keys, kind="stable")
     cells, starts = np.unique(keys[order], return_index=True)
-    for members, cell in zip(np.split(order, starts[1:]), cells, strict=True):
-        yield members, tuple(int(at) for at in np.unravel_index(cell, shape))
+    corners = np.stack(np.unravel_index(cells, shape), axis=1)
+    return order, starts.tolist(), corners.tolist()
+
+
+def _groups(
+    axes: tuple[SplineAxis, ...], spans: list[Indices]
+) -> Iterator[tuple[Indices, list[int]]]:
+    """Yield the points of each cell together with the cell's first coefficients."""
+    order, starts, corners = _sort_cells(axes, spans)
+    yield from zip(np.split(order, starts[1:]), corners, strict=True)
 
 
 def _outer(weights: list[Array]) -> Array:

@@ -33,6 +33,9 @@ from gmid.simulation.results import (
 _ANALYSES = (".op", ".dc", ".ac", ".noise", ".tran")
 _ONE_AT_A_TIME = threading.RLock()
 
+_MEMORY = "/dev/shm"
+"""Folder in memory, where there is one: the simulator writes and syncs files on every run."""
+
 
 def is_available() -> bool:
     """Say whether the reference simulator is installed.
@@ -133,8 +136,10 @@ def _find_analysis(flat: str) -> str:
 @contextlib.contextmanager
 def _quiet_folder() -> Iterator[Any]:
     """Work in a temporary folder with what the simulator prints caught in a file."""
-    with tempfile.TemporaryDirectory(prefix="gmid-") as scratch, contextlib.ExitStack() as stack:
-        caught = stack.enter_context(tempfile.TemporaryFile())
+    memory = _MEMORY if os.access(_MEMORY, os.W_OK) else None
+    with contextlib.ExitStack() as stack:
+        scratch = stack.enter_context(tempfile.TemporaryDirectory(prefix="gmid-", dir=memory))
+        caught = stack.enter_context(tempfile.TemporaryFile(dir=memory))
         _flush()
         for stream in (1, 2):
             kept = os.dup(stream)

@@ -188,7 +188,7 @@ class ByteStream:
         self._packed, self._limits = packed, limits or Limits()
         self._encoding, self._carriage = encoding, carriage
         self._decoder = None
-        if encoding not in ("utf-8", "latin-1"):
+        if encoding not in ("utf-8", "latin-1", "binary"):
             self._decoder = codecs.getincrementaldecoder(encoding)()
         self._on_digest = on_digest
         self._total = self._run = self._seen_lines = 0
@@ -309,7 +309,14 @@ class ByteStream:
 
     def _transcode(self, data: bytes, *, first: bool) -> bytes:
         if self._decoder is not None:
-            text = self._decoder.decode(data, not data)
+            try:
+                text = self._decoder.decode(data, not data)
+            except UnicodeDecodeError as error:
+                raise DataFault(
+                    f"the text is no valid {self._encoding.upper()}: {error.reason}.",
+                    where=f"{self._name}:{self._seen_lines + 1}",
+                    hint="The file is damaged or cut off: copy it again.",
+                ) from error
             data = (text.removeprefix("\ufeff") if first else text).encode()
         elif self._encoding == "latin-1":
             if not data.isascii():
@@ -335,6 +342,8 @@ class ByteStream:
             )  # fmt: skip
 
     def _check_block(self, block: bytes) -> None:
+        if self._encoding == "binary":
+            return
         if b"\0" in block:
             line = self._seen_lines + block.count(b"\n", 0, block.index(b"\0")) + 1
             raise DataFault(

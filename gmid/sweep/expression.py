@@ -1,7 +1,8 @@
 """Expressions in a file's own column names: ``-i(vd)``, ``v(d) - v(s)``, ``1/ro``.
 
-Known are ``+ - * / ( )``, ``abs`` and numbers.  Column names come first, the longest that
-fits, case-blind; back quotes force a name.  Nothing is ever evaluated as Python.
+Known are ``+ - * / ( )``, ``abs``, ``re`` and ``im`` (of complex columns) and numbers.  Column
+names come first, the longest that fits, case-blind; back quotes force a name.  Nothing is ever
+evaluated as Python.
 """
 
 from __future__ import annotations
@@ -19,6 +20,7 @@ from gmid.errors import DataFault, UnknownName, advise
 _NUMBER = re.compile(r"(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?")
 _WORD = re.compile(r"[^\s+*/()-][^\s+*/-]*")
 _OPERATORS = "+-*/()"
+_FUNCTIONS: dict[str, Callable[[Any], Any]] = {"abs": np.abs, "re": np.real, "im": np.imag}
 
 Node = tuple[Any, ...]
 
@@ -32,7 +34,8 @@ class Expression:
     text : str
         As the recipe has it.
     tree : tuple
-        Nested nodes: ``("column", name)``, ``("number", value)``, ``("abs", node)``,
+        Nested nodes: ``("column", name)``, ``("number", value)``, ``("abs", node)``
+        (likewise ``re``, ``im``),
         ``("negate", node)`` or ``(operator, left, right)``.
     columns : tuple of str
         Names of the columns it needs, each once.
@@ -133,9 +136,10 @@ def _tokenise(text: str, names: Sequence[str], where: str | None) -> list[tuple[
             tokens.append(("number", float(match.group())))
             position = match.end()
             continue
-        if text[position : position + 3].lower() == "abs" and not _continues(text, position + 3):
-            tokens.append(("abs", None))
-            position += 3
+        function = next((word for word in _FUNCTIONS if _has_word(text, position, word)), None)
+        if function is not None:
+            tokens.append((function, None))
+            position += len(function)
             continue
         if char not in _OPERATORS:
             raise _unknown(_word(text, position), ordered, where)
@@ -153,6 +157,11 @@ def _column_at(text: str, position: int, ordered: Sequence[str]) -> str | None:
         ):
             return name
     return None
+
+
+def _has_word(text: str, position: int, word: str) -> bool:
+    end = position + len(word)
+    return text[position:end].lower() == word and not _continues(text, end)
 
 
 def _continues(text: str, position: int) -> bool:
@@ -201,7 +210,7 @@ class _Parser:
         return DataFault(
             f"{self.text!r} is not a well-formed expression.",
             where=self.where,
-            hint="Known are + - * / ( ), abs, numbers and the file's column names.",
+            hint="Known are + - * / ( ), abs, re, im, numbers and the file's column names.",
         )
 
     def expect_end(self) -> None:
@@ -234,11 +243,11 @@ class _Parser:
         kind = self.peek()
         if kind in ("column", "number"):
             return self.take()
-        if kind == "abs":
+        if kind in _FUNCTIONS:
             self.take()
             if self.peek() != "(":
                 raise self.fail()
-            return ("abs", self.value())
+            return (kind, self.value())
         if kind == "(":
             self.take()
             node = self.sum()
@@ -264,8 +273,8 @@ def _evaluate(node: Node, lookup: Mapping[str, NDArray[Any]]) -> Any:
         return lookup[node[1]]
     if kind == "number":
         return node[1]
-    if kind == "abs":
-        return np.abs(_evaluate(node[1], lookup))
+    if kind in _FUNCTIONS:
+        return _FUNCTIONS[kind](_evaluate(node[1], lookup))
     if kind == "negate":
         return -_evaluate(node[1], lookup)
     left, right = (_evaluate(part, lookup) for part in node[1:])

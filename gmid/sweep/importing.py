@@ -6,16 +6,19 @@ table.
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-from gmid.errors import DataFault, GmidError, raise_faults
+from gmid.errors import DataFault, GmidError, UnknownName, raise_faults
 from gmid.sweep.checks import check_sweep
 from gmid.sweep.derive import derive_missing
 from gmid.sweep.gridding import build_sweep
 from gmid.sweep.mapping import map_tables
+from gmid.sweep.merging import merge_rows
 from gmid.sweep.model import Sweep
+from gmid.sweep.parts import list_columns
 from gmid.sweep.readers import read_text
 from gmid.sweep.recipe import Recipe, SweepRecipe
 from gmid.sweep.rows import Note, Rows
@@ -83,10 +86,12 @@ def import_recipe(recipe: Recipe, *, progress: Progress | None = None) -> list[S
     done = 0
     sweeps: list[Sweep] = []
     faults: list[GmidError] = []
+    sources: dict[str, SourceFile] = {}
+    mapped: dict[tuple[str, str], list[tuple[Rows, SweepRecipe]]] = {}
+    devices = Counter(entry.device for entry in recipe.sweeps)
     for entry in recipe.sweeps:
         try:
             tables: list[TextTable] = []
-            sources: dict[str, SourceFile] = {}
             for path in entry.files:
                 if progress is not None:
                     progress(f"{entry.device}: {path.name}", done, total)
@@ -94,15 +99,53 @@ def import_recipe(recipe: Recipe, *, progress: Progress | None = None) -> list[S
                 tables += found
                 sources[found[0].source] = source
                 done += 1
-            for rows in map_tables(entry, tables):
-                sweeps.append(_finish(rows, entry, recipe, sources))
+            for rows in map_tables(entry, tables, partial=devices[entry.device] > 1):
+                key = entry.device, str(rows.condition)
+                mapped.setdefault(key, []).append((rows, entry))
+        except GmidError as fault:
+            faults.append(fault)
+    for group in mapped.values() if not faults else ():
+        try:
+            sweeps.append(_finish(_merged(group), group[0][1], recipe, sources))
         except GmidError as fault:
             faults.append(fault)
     faults += _repeated(sweeps)
-    raise_faults(faults)
+    raise_faults({str(fault): fault for fault in faults}.values())
     if progress is not None and total:
         progress("read", total, total)
     return sweeps
+
+
+def _merged(group: Sequence[tuple[Rows, SweepRecipe]]) -> Rows:
+    """Join what several sweeps of a recipe tell of one device and condition."""
+    first, entry = group[0]
+    names = Counter(name for rows, _ in group for name in rows.values)
+    twice = [name for name, count in names.items() if count > 1]
+    if twice:
+        raise DataFault(
+            f"{first.label} is imported twice by one recipe: {', '.join(twice)}.",
+            where=group[1][1].where,
+            hint="Give the sweeps different conditions, or different quantities to be joined.",
+        )
+    if "id" not in names:
+        tables = [table for rows, _ in group for _, table, _ in rows.pieces]
+        raise UnknownName(
+            f"no column of {tables[0].source} gives id, the drain current.",
+            where=entry.where,
+            hint=f"Name it in the recipe: [sweep.quantities] id = ... {list_columns(tables[0])}",
+        )
+    for rows, other in group[1:]:
+        if other.unit != entry.unit:
+            raise DataFault(
+                f"{rows.label} has another unit transistor in two sweeps that are to be joined: "
+                f"{other.unit} against {entry.unit}.",
+                where=other.where,
+                hint="One device has one width, finger count, polarity and netlist line.",
+            )
+    files = tuple(dict.fromkeys(table.source for rows, _ in group for _, table, _ in rows.pieces))
+    merged = merge_rows([rows for rows, _ in group])
+    merged.files = files
+    return merged
 
 
 def _read(path: Any, entry: SweepRecipe) -> tuple[list[TextTable], SourceFile]:
@@ -112,6 +155,8 @@ def _read(path: Any, entry: SweepRecipe) -> tuple[list[TextTable], SourceFile]:
         options["columns"] = entry.columns
     if entry.suffixes is not None:
         options["suffixes"] = entry.suffixes
+    if entry.record is not None:
+        options["record"] = entry.record
     tables = read_text(source, layout=entry.layout, **options)
     rows = sum(table.rows for table in tables)
     return tables, SourceFile(path.name, source.sha256, tables[0].layout, rows)
@@ -126,7 +171,8 @@ def _finish(
     sweep, derived = derive_missing(sweep, unwanted)
     faults, doubts = check_sweep(sweep)
     raise_faults([_placed(fault, rows) for fault in faults])
-    read = [sources[name] for name in dict.fromkeys(table.source for _, table, _ in rows.pieces)]
+    names = rows.files or tuple(dict.fromkeys(table.source for _, table, _ in rows.pieces))
+    read = [sources[name] for name in names]
     first = Note(
         "read",
         f"{rows.size} rows from {len(read)} file(s), "

@@ -8,15 +8,16 @@ from pathlib import Path
 
 from gmid.sweep.model import UnitTransistor
 
-ORIGINS = ("name", "title", "comment", "header", "step")
-"""Places other than columns from which one value for a whole table can be taken."""
+ORIGINS = ("name", "title", "comment", "header", "step", "column")
+"""Places from which one value for a whole table can be taken; ``column``: the columns' names."""
 
 
 @dataclass(frozen=True)
 class ValueSource:
     """Where the values of one axis, quantity or condition come from.
 
-    Exactly one of `expression`, `value`, `origin`, `restart` and `derived` is set.
+    Exactly one of `expression`, `value`, `origin`, `restart`, `derived`, `preceding`,
+    `admittance` and `spectrum` is set.
 
     Parameters
     ----------
@@ -36,6 +37,16 @@ class ValueSource:
         The axis whose restart moves a `restart` axis to its next value.
     derived : bool
         Ignore what the file has and derive the quantity.
+    values : mapping of str to float, optional
+        What each captured text stands for, in SI.
+    preceding : str, optional
+        Expression in the columns of the nearest table above that has one row.
+    admittance : str, optional
+        Expression of the complex current into a terminal per volt that drives another.
+    spectrum : str, optional
+        Expression of a noise density along a column of frequencies.
+    resistance : float, optional
+        Resistance in which the noise current of a voltage spectrum flows [ohm].
     where : str, optional
         Place in the recipe.
 
@@ -53,6 +64,11 @@ class ValueSource:
     restart: tuple[float, ...] | None = None
     outside: str = "vgs"
     derived: bool = False
+    values: Mapping[str, float] | None = None
+    preceding: str | None = None
+    admittance: str | None = None
+    spectrum: str | None = None
+    resistance: float | None = None
     where: str | None = None
 
 
@@ -82,6 +98,12 @@ class SweepRecipe:
         Dialect of engineering suffixes, ``spice`` or ``si``.
     rows : mapping of str to str
         Keep only the rows whose column of words holds this word.
+    record : str, optional
+        Regular expression of the line that begins a record of an operating-point listing.
+    plots : str, optional
+        Regular expression; tables whose plot name and title it does not fit are left out.
+    frequency : float, optional
+        Frequency at which admittances are read [Hz].
     where : str, optional
         Place in the recipe.
 
@@ -103,6 +125,9 @@ class SweepRecipe:
     columns: tuple[str, ...] = ()
     suffixes: str | None = None
     rows: Mapping[str, str] = field(default_factory=dict)
+    record: str | None = None
+    plots: str | None = None
+    frequency: float | None = None
     where: str | None = None
 
 

@@ -58,6 +58,8 @@ class Rows:
         First row, table it came from, and the table's rows that were taken (None for all).
     notes : list of Note
         What the audit will tell.
+    files : tuple of str
+        Files they came from, where `pieces` do not tell all.
 
     Examples
     --------
@@ -72,6 +74,7 @@ class Rows:
     values: dict[str, Array]
     pieces: Sequence[tuple[int, TextTable, NDArray[np.intp] | None]]
     notes: list[Note] = field(default_factory=list)
+    files: tuple[str, ...] = ()
 
     @property
     def size(self) -> int:

@@ -42,7 +42,8 @@ class TextSource:
     name : str
         The file as the user named it, for messages.
     encoding : str
-        ``utf-8`` (or plain ASCII), ``latin-1``, ``utf-16-le``, ``utf-16-be``.
+        ``utf-8`` (or plain ASCII), ``latin-1``, ``utf-16-le``, ``utf-16-be``; ``binary`` for a
+        raw file whose values are no text.
     head : str
         The first 64 kB, decoded, without byte-order mark, lines ending in ``\n``.
     head_is_all : bool
@@ -310,10 +311,7 @@ def _find_encoding(head: bytes, name: str) -> str:
         if head.startswith(bom):
             return encoding
     if re.match(rb"Title:[^\0]*^Variables:[^\0]*^Binary:", head, re.DOTALL | re.MULTILINE):
-        raise DataFault(
-            "this is a binary raw file.", where=name,
-            hint="Have the simulator write it as text (ASCII raw) instead.",
-        )  # fmt: skip
+        return "binary"
     nulls = head.count(b"\0")
     if nulls > 0.3 * len(head):
         if head[0::2].count(b"\0") == 0:
@@ -339,7 +337,9 @@ def _decode_head(head: bytes, encoding: str, is_all: bool) -> str:
         if encoding != "latin-1" and head.startswith(bom):
             head = head[len(bom) :]
             break
-    if encoding == "utf-8" and is_all:
+    if encoding == "binary":
+        text = head[: re.search(rb"^Binary:", head, re.MULTILINE).end()].decode("latin-1")  # type: ignore[union-attr]
+    elif encoding == "utf-8" and is_all:
         text = head.decode("utf-8", errors="replace")
     else:
         text = head.decode(encoding, errors="ignore")

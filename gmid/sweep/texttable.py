@@ -61,6 +61,8 @@ class TextTable:
         What the text says besides: ``title``, ``header``, ``comment``, ``step``, ``plot``.
     layout : str
         Name of the layout it was read as.
+    counts_points : bool
+        Whether "lines" are numbers of points, the file being binary.
 
     Examples
     --------
@@ -76,6 +78,7 @@ class TextTable:
     lines: NDArray[np.int64] | None = None
     meta: Mapping[str, str] = field(default_factory=dict)
     layout: str = ""
+    counts_points: bool = False
 
     @property
     def rows(self) -> int:
@@ -127,6 +130,8 @@ class TextTable:
         >>> TextTable("a.csv", [], first_line=2).where(0)
         'a.csv:2'
         """
+        if self.counts_points:
+            return f"{self.source}: point {self.line_of(row)}"
         return f"{self.source}:{self.line_of(row)}"
 
     def column(self, name: str) -> Column:

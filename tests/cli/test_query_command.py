@@ -124,7 +124,16 @@ def test_terminal_and_python_agree(gmid, table, words, arguments, scale):
     point = device.at(**({"length": 0.31e-6, "vsb": 0.2, "vds": 0.55} | arguments))
     answer = (point.scaled(**scale) if scale else point).to_dict()
     assert rows.code == 0, rows.err
+    (drive,) = [name for name, value in arguments.items() if isinstance(value, list)]
     for index, row in enumerate(rows.json["rows"]):
+        alone = device.at(**(
+            {"length": 0.31e-6, "vsb": 0.2, "vds": 0.55}
+            | arguments
+            | {drive: arguments[drive][index]}
+        ))  # fmt: skip
+        alone = alone.scaled(**scale) if scale else alone
+        numbers = {name: value for name, value in row.items() if name in alone.fields}
+        assert numbers == pytest.approx(alone.to_dict(), rel=1e-12, abs=1e-30)
         for name, column in answer.items():
             expected = float(np.broadcast_to(column, point.shape)[index])
             assert row[name] == pytest.approx(expected, rel=1e-12, abs=1e-30), name

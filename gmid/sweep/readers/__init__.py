@@ -8,12 +8,30 @@ from types import ModuleType
 from typing import Any
 
 from gmid.errors import DataFault, UnknownName, UsageFault, advise
-from gmid.sweep.readers import columns, csv, spice_raw
+from gmid.sweep.readers import (
+    blocks,
+    columns,
+    csv,
+    measured_blocks,
+    measurement,
+    operating_point,
+    print_listing,
+    spice_raw,
+    stepped,
+    typed_trace,
+)
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
 _MODULES = (
     spice_raw,
+    typed_trace,
+    measured_blocks,
+    measurement,
+    stepped,
+    print_listing,
+    blocks,
+    operating_point,
     csv,
     columns,
 )
@@ -23,6 +41,7 @@ LAYOUTS: Mapping[str, ModuleType] = {module.LAYOUT: module for module in _MODULE
 
 _LOG_WORDS = ("error", "aborted", "singular", "fatal", "failed")
 _SURE = 0.3
+_CERTAIN = 0.98
 
 
 def recognise(source: TextSource) -> list[tuple[str, float]]:
@@ -44,7 +63,11 @@ def recognise(source: TextSource) -> list[tuple[str, float]]:
     >>> recognise(open_bytes(b"vgs,id\n0,1e-12\n", name="a.csv"))[0]
     ('csv', 0.8)
     """
-    judged = [(name, float(module.recognise(source.head))) for name, module in LAYOUTS.items()]
+    judged: list[tuple[str, float]] = []
+    for name, module in LAYOUTS.items():
+        judged.append((name, float(module.recognise(source.head))))
+        if judged[-1][1] > _CERTAIN:
+            break
     return sorted((pair for pair in judged if pair[1] > 0), key=lambda pair: -pair[1])
 
 

@@ -9,7 +9,7 @@ import numpy as np
 from gmid.errors import DataFault
 from gmid.sweep.numbers import parse_number
 from gmid.sweep.readers.common import read_shape
-from gmid.sweep.readers.scan import Shape, normalise_number, scan_lines
+from gmid.sweep.readers.scan import HeaderMissing, Shape, normalise_number, scan_lines
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
@@ -36,7 +36,7 @@ def recognise(head: str) -> float:
     """
     lines = head.split("\n")[:400]
     shape = scan_lines(lines, None, suffixes="spice")
-    if shape is None or len(shape.text) * 2 > shape.fields:
+    if shape is None or len(shape.text) * 2 >= shape.fields:
         return 0.0
     rows = [line.split() for line in lines[shape.first_line - 1 :] if line.strip()][:200]
     steady = sum(len(row) == shape.fields for row in rows) / len(rows)
@@ -90,10 +90,11 @@ def read(
     if columns is not None:
         columns = _spread(source, shape, list(columns))
     elif shape.header is None and _has_repeated_scale(source, shape, suffixes):
-        raise DataFault(
+        raise HeaderMissing(
             f"the {shape.width} columns have no header; columns 1, 3, 5 ... look like one scale "
             "that is repeated.", where=source.where(shape.first_line),
             hint="List the scale and then the vectors in the recipe: columns = [...].",
+            width=shape.width,
         )  # fmt: skip
     table = read_shape(source, shape, layout=LAYOUT, columns=columns, suffixes=suffixes)
     if spread and columns is not None:

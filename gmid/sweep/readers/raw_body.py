@@ -18,7 +18,7 @@ from gmid.sweep.numbers import is_missing, parse_number
 from gmid.sweep.readers.careful import FaultList
 from gmid.sweep.readers.raw_header import Plot
 from gmid.sweep.readers.rows import has_cut_number
-from gmid.sweep.readers.segments import cut_segments, parse_in_order, read_frame
+from gmid.sweep.readers.segments import GrowingArray, cut_segments, parse_in_order, read_frame
 from gmid.sweep.source import TextSource, decode_line
 
 _FEW = 1000
@@ -137,7 +137,7 @@ def _parse(text: bytes, *, count: int, is_complex: bool) -> _Piece | None:
     if not np.isfinite(flat).all():
         return None
     phase = -int(orders[0]) % count if orders.size else 0
-    columns = [flat[(j - phase) % count :: count].copy() for j in range(count)]
+    columns = [flat[(j - phase) % count :: count] for j in range(count)]
     return _Piece(columns, filled.size, ends.size, filled[orders], orders)
 
 
@@ -210,25 +210,20 @@ def _read_fast(stream: ByteStream, plot: Plot) -> Body | None:
     """Read regular values with the C reader; None when they are not."""
     feed, count = _Feed(stream), len(plot.variables)
     line, entries = stream.line + 1, 0
-    pieces: list[list[NDArray[Any]]] = [[] for _ in range(count)]
-    lines: list[NDArray[np.int64]] = []
+    store, lines = [GrowingArray() for _ in range(count)], GrowingArray()
     parse = partial(_parse, count=count, is_complex=plot.is_complex)
     for piece in parse_in_order(cut_segments(feed.read), parse):
         expected = np.arange(-entries % count, piece.entries if piece else 0, count)
         if piece is None or not np.array_equal(piece.orders, expected):
             feed.give_back()
             return None
-        for column, values in zip(pieces, piece.columns, strict=True):
+        for column, values in zip(store, piece.columns, strict=True):
             column.append(values)
         lines.append(piece.starts + line)
         line, entries = line + piece.line_count, entries + piece.entries
     if entries == 0 or entries % count or has_cut_number(feed.tail, "\t"):
         return None
-    columns = []
-    for column in pieces:
-        columns.append(np.concatenate(column))
-        column.clear()
-    return Body(columns, np.concatenate(lines))
+    return Body([column.finish() for column in store], lines.finish())
 
 
 class _Tokens:

@@ -61,6 +61,8 @@ class Plot:
         Lines of ``No. Points:`` and ``Values:``.
     found_points : int
         Set when the values have been read.
+    is_binary : bool
+        Whether the values are no text.
     """
 
     number: int
@@ -72,10 +74,11 @@ class Plot:
     points_line: int
     values_line: int
     found_points: int = 0
+    is_binary: bool = False
 
 
 def read_header(source: TextSource, stream: ByteStream, number: int) -> Plot | None:
-    r"""Read lines up to and with ``Values:``.
+    r"""Read lines up to and with ``Values:`` or ``Binary:``.
 
     Parameters
     ----------
@@ -94,7 +97,7 @@ def read_header(source: TextSource, stream: ByteStream, number: int) -> Plot | N
     Raises
     ------
     DataFault
-        If the header is incomplete, contradicts itself or belongs to a binary file.
+        If the header is incomplete or contradicts itself.
 
     Examples
     --------
@@ -125,13 +128,10 @@ def read_header(source: TextSource, stream: ByteStream, number: int) -> Plot | N
             )  # fmt: skip
         else:
             key = match["key"].lower()
-            if key == "binary":
-                raise DataFault(
-                    "the values are binary.", where=source.where(stream.line),
-                    hint="Have the simulator write the raw file as text (ASCII).",
-                )  # fmt: skip
-            if key == "values":
-                return _make_plot(source, keys, variables, number, stream.line)
+            if key in ("values", "binary"):
+                plot = _make_plot(source, keys, variables, number, stream.line)
+                plot.is_binary = key == "binary"
+                return plot
             in_variables = key == "variables"
             first = _read_variable(match["value"], stream.line) if in_variables else None
             if first is not None:

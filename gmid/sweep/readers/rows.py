@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from gmid.sweep.bytestream import ByteStream
 from gmid.sweep.readers.scan import Shape
 from gmid.sweep.readers.segments import (
-    ColumnStore,
+    GrowingArray,
     cut_segments,
     parse_in_order,
     read_frame,
@@ -82,7 +82,7 @@ def read_rows_fast(source: TextSource, shape: Shape) -> Rows | None:
     """
     if (shape.decimal_comma or shape.fortran) and shape.text:
         return None
-    store = ColumnStore(shape.width)
+    store, count = [GrowingArray() for _ in range(shape.width)], 0
     parse = partial(_parse, shape=shape, options=_options(shape))
     with source.stream() as stream:
         while stream.line < shape.first_line - 1:
@@ -91,18 +91,20 @@ def read_rows_fast(source: TextSource, shape: Shape) -> Rows | None:
         for columns in parse_in_order(cut_segments(stream.read), parse):
             if columns is None:
                 return None
-            store.append(columns)
-        if store.rows == 0 or has_cut_number(stream.tail, shape.separator):
+            count += columns[0].size
+            for column, values in zip(store, columns, strict=True):
+                column.append(values)
+        if count == 0 or has_cut_number(stream.tail, shape.separator):
             return None
-        uniform = _count_lines(stream) - (shape.first_line - 1) == store.rows
+        uniform = _count_lines(stream) - (shape.first_line - 1) == count
     lines = None
     if not uniform:
         numbers = [number for number, text in source.lines(shape.first_line) if text.strip()]
-        if len(numbers) != store.rows:
+        if len(numbers) != count:
             return None
         lines = np.array(numbers, dtype=np.int64)
     first = shape.first_line if lines is None else int(lines[0])
-    return Rows(store.join(), first, lines)
+    return Rows([column.finish() for column in store], first, lines)
 
 
 def has_cut_number(tail: bytes, separator: str | None) -> bool:
@@ -187,7 +189,7 @@ def _parse(text: bytes, *, shape: Shape, options: dict[str, Any]) -> list[NDArra
         values = frame[j].to_numpy()
         if not np.isfinite(values).all():
             return None
-        columns.append(values.copy())
+        columns.append(values)
     if shape.trailing and any(frame[shape.fields - 1].cat.categories != ""):
         return None
     return columns

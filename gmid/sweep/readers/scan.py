@@ -19,6 +19,14 @@ _FORTRAN = re.compile(r"[+-]?(?:\d+[.,]?\d*|[.,]\d+)[dD][+-]?\d+")
 _RULER = re.compile(r"[-=_+|]{2,}")
 
 
+class HeaderMissing(DataFault):
+    """A table without names of its columns, of which there are `width`."""
+
+    def __init__(self, message: str, *, where: str, hint: str, width: int) -> None:
+        super().__init__(message, where=where, hint=hint)
+        self.width = width
+
+
 @dataclass(frozen=True)
 class Line:
     """One line of the head, split into cells.
@@ -115,7 +123,11 @@ def split_cells(text: str, separator: str | None) -> list[str]:
     if separator is None:
         return text.split()
     if '"' in text:
-        return [cell.strip() for cell in next(csv.reader([text], delimiter=separator))]
+        try:
+            cells = next(csv.reader([text.replace("\r", " ")], delimiter=separator))
+        except csv.Error:
+            cells = text.split(separator)
+        return [cell.strip() for cell in cells]
     return [cell.strip() for cell in text.split(separator)]
 
 
@@ -260,9 +272,10 @@ def settle_header(
         return list(columns), shape
     header = shape.header
     if header is None:
-        raise DataFault(
+        raise HeaderMissing(
             f"the {shape.width} columns have no header.", where=source.where(shape.first_line),
             hint="List their names in the recipe: columns = [...], from left to right.",
+            width=shape.width,
         )  # fmt: skip
     cells = list(header.cells)
     if shape.separator is None:
@@ -362,7 +375,8 @@ def _first_row(found: Sequence[Line], first: Line, header: Line | None, units: L
         return next(line.number for line in plain if line.number > last)
     start = first.number
     for line in reversed(plain[:-1]):
-        if "t" in line.kinds:
+        below = header is not None and line.number > header.number and "n" in line.kinds
+        if "t" in line.kinds and not below:
             break
         start = line.number
     return start

@@ -16,7 +16,7 @@ from typing import Any, TypeVar
 import numpy as np
 from numpy.typing import NDArray
 
-SEGMENT = 1 << 22
+SEGMENT = 1 << 19
 _MOST_WORKERS = 4
 T = TypeVar("T")
 
@@ -144,49 +144,53 @@ def parse_in_order(segments: Iterator[bytes], parse: Callable[[bytes], T]) -> It
             yield waiting.popleft().result()
 
 
-class ColumnStore:
-    """Gathers chunks of columns and joins them, holding little more than the result.
-
-    Parameters
-    ----------
-    count : int
-        Number of columns.
+class GrowingArray:
+    """One column that grows at its end, in place where the memory allows.
 
     Examples
     --------
-    >>> store = ColumnStore(1)
-    >>> store.append([np.array([1.0])])
-    >>> store.append([np.array([2.0])])
-    >>> store.join()[0].tolist()
-    [1.0, 2.0]
+    >>> column = GrowingArray()
+    >>> column.append(np.array([1.0]))
+    >>> column.append(np.array([2.0, 3.0]))
+    >>> column.finish().tolist()
+    [1.0, 2.0, 3.0]
     """
 
-    def __init__(self, count: int) -> None:
-        self._pieces: list[list[NDArray[Any]]] = [[] for _ in range(count)]
-        self.rows = 0
+    def __init__(self) -> None:
+        self._values: NDArray[Any] = np.empty(0)
+        self._words: list[NDArray[Any]] = []
+        self.size = 0
 
-    def append(self, chunk: list[NDArray[Any]]) -> None:
-        """Add rows.
+    def append(self, values: NDArray[Any]) -> None:
+        """Copy values to the end.
 
         Parameters
         ----------
-        chunk : list of ndarray, shape (n,)
-            One array a column; they are kept, not copied.
+        values : ndarray, shape (n,)
+            All of one kind; may be a view.
         """
-        for pieces, values in zip(self._pieces, chunk, strict=True):
-            pieces.append(values)
-        self.rows += len(chunk[0])
+        if values.dtype.kind == "U":
+            self._words.append(values)
+            return
+        if self.size == 0:
+            self._values = np.empty(0, values.dtype)
+        size = self.size + values.size
+        if size > self._values.size:
+            room = max(size, self._values.size + self._values.size // 8)
+            self._values.resize(room, refcheck=False)
+        self._values[self.size : size] = values
+        self.size = size
 
-    def join(self) -> list[NDArray[Any]]:
-        """Give the whole columns and forget the pieces.
+    def finish(self) -> NDArray[Any]:
+        """Give the column and forget it.
 
         Returns
         -------
-        list of ndarray, shape (n_rows,)
-            One a column.
+        ndarray, shape (n,)
+            All that was appended.
         """
-        joined = []
-        for pieces in self._pieces:
-            joined.append(pieces[0] if len(pieces) == 1 else np.concatenate(pieces))
-            pieces.clear()
-        return joined
+        if self._words:
+            return np.concatenate(self._words)
+        values, self._values = self._values, np.empty(0)
+        values.resize(self.size, refcheck=False)
+        return values

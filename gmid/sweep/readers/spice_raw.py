@@ -1,4 +1,4 @@
-"""Layout ``spice-raw``: SPICE3 raw files written as text, several plots in one file."""
+"""Layout ``spice-raw``: SPICE3 raw files, text or binary, several plots in one file."""
 
 from __future__ import annotations
 
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from gmid.errors import DataFault
 from gmid.sweep.bytestream import ByteStream
 from gmid.sweep.readers.common import drop_repeats
+from gmid.sweep.readers.raw_binary import read_binary
 from gmid.sweep.readers.raw_body import Body, read_body
 from gmid.sweep.readers.raw_header import Plot, Variable, read_header
 from gmid.sweep.source import TextSource
@@ -80,8 +81,11 @@ def read(source: TextSource, *, suffixes: str = "spice") -> list[TextTable]:
     tables: list[TextTable] = []
     with source.stream() as stream:
         while (plot := read_header(source, stream, len(tables) + 1)) is not None:
-            body = read_body(source, stream, plot, suffixes=suffixes)
-            _check_points(source, stream, plot, body)
+            if plot.is_binary:
+                body = read_binary(source, stream, plot)
+            else:
+                body = read_body(source, stream, plot, suffixes=suffixes)
+                _check_points(source, stream, plot, body)
             tables.append(_make_table(source, plot, body))
     if not tables:
         raise DataFault(
@@ -132,6 +136,7 @@ def _make_table(source: TextSource, plot: Plot, body: Body) -> TextTable:
         source.name, [made[position] for position in kept], first_line=int(body.lines[0]),
         lines_per_row=int(steps[0]) if uniform and steps.size else len(made),
         lines=None if uniform else body.lines, meta=meta, layout=LAYOUT,
+        counts_points=plot.is_binary,
     )  # fmt: skip
 
 

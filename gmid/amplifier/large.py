@@ -1,0 +1,358 @@
+"""Large signals: slewing, output swing, input range and static distortion, by bias solutions.
+
+Sweeps are one more leading axis of the batch, so that all of their points are solved at once.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from gmid.amplifier.signal import OUTPUT, differential_gain
+from gmid.amplifier.topology import build_circuit
+from gmid.circuit.bias import Bias, solve_bias
+
+if TYPE_CHECKING:
+    from gmid.amplifier.prediction import Prediction
+
+Array = NDArray[np.float64]
+
+OVERDRIVE = 0.4
+"""Differential input that switches the tail to one side [V]."""
+
+GAIN_DROP = float(np.sqrt(0.5))
+"""Small-signal gain, over that at rest, at which the output swing ends [-]."""
+
+_POINTS = 31
+_FINE = 7
+_HARMONIC_POINTS = 12
+
+
+@dataclass(frozen=True, eq=False)
+class Curve:
+    """Static transfer from rest to one side; the other side is its mirror image.
+
+    Parameters
+    ----------
+    input, output : ndarray, shape (n, ...)
+        Differential voltages [V], the first ones zero.
+    gain : ndarray, shape (n, ...)
+        Small-signal gain there [-].
+    saturation : ndarray, shape (n, ...)
+        Smallest headroom of all transistors there [V].
+
+    Examples
+    --------
+    >>> line = np.linspace(0, 1, 3)
+    >>> Curve(line, 2 * line, 2 + 0 * line, 0.1 - line).output.tolist()
+    [0.0, 1.0, 2.0]
+    """
+
+    input: Array
+    output: Array
+    gain: Array
+    saturation: Array
+
+
+@dataclass(frozen=True, eq=False)
+class Swing:
+    """How far the differential output goes.
+
+    Parameters
+    ----------
+    by_gain : ndarray, shape (...)
+        Peak at which the small-signal gain has fallen by 3 dB [V].
+    by_saturation : ndarray, shape (...)
+        Peak at which a transistor comes inside the saturation margin [V].
+
+    Examples
+    --------
+    >>> float(Swing(np.array(1.1), np.array(0.9)).peak)
+    0.9
+    """
+
+    by_gain: Array
+    by_saturation: Array
+
+    @property
+    def peak(self) -> Array:
+        """The smaller of the two, which is judged [V]."""
+        return np.minimum(self.by_gain, self.by_saturation)
+
+
+def _solve_at(
+    found: Prediction, *, difference: ArrayLike = 0.0, input_level: Array | None = None
+) -> Bias:
+    """Solve the bench at other inputs, from its own bias point."""
+    level = found.supply.input_level.at(found.voltage) if input_level is None else input_level
+    circuit = build_circuit(
+        found.plan, voltage=found.voltage, vcm=found.supply.common_mode.at(found.voltage),
+        input_level=level, reference_current=found.reference_current, difference=difference,
+    )  # fmt: skip
+    return solve_bias(circuit, found.devices, start=found.bias)
+
+
+def _smallest_headroom(bias: Bias) -> Array:
+    rows = [np.broadcast_to(bias.headroom(t.name), bias.batch) for t in bias.circuit.transistors]
+    return np.asarray(np.min(np.stack(rows), axis=0))
+
+
+def trace_curve(found: Prediction, input: Array) -> Curve:
+    """Solve the static transfer at given inputs.
+
+    Parameters
+    ----------
+    found : Prediction
+        The amplifier.
+    input : ndarray, shape (n, ...)
+        Differential inputs [V].
+
+    Returns
+    -------
+    Curve
+        Not-a-number where there is no solution.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.prediction import predict
+    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
+    >>> curve = trace_curve(found, np.array([0.0, 1e-3]))
+    >>> bool(curve.output[1] > 0.05)
+    True
+    """
+    bias = _solve_at(found, difference=input)
+    network = bias.linearise(drives=("vip", "vin"), noise=False)
+    gain = differential_gain(network)(0.0).real
+    output = bias.voltage(OUTPUT[0], OUTPUT[1])
+    return Curve(np.broadcast_to(input, output.shape), output, gain, _smallest_headroom(bias))
+
+
+def measure_swing(found: Prediction, margin: float) -> Swing:
+    """Measure the output swing.
+
+    Parameters
+    ----------
+    found : Prediction
+        The amplifier.
+    margin : float
+        Headroom that every transistor keeps [V].
+
+    Returns
+    -------
+    Swing
+        Peaks; zero where a transistor lacks the margin at rest.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.prediction import predict
+    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
+    >>> bool(0.5 < measure_swing(found, 0.05).by_gain < 1.8)
+    True
+    """
+    scale = 2.5 * found.voltage / np.abs(found.signal.dc_gain)
+    curve = trace_curve(found, _along(np.linspace(0.0, 1.0, _POINTS) ** 1.5, scale))
+    drop, room = _excesses(curve, curve.gain[:1], margin)
+    ends = [_bracket(excess, curve.input) for excess in (drop, room)]
+    share = np.linspace(0.0, 1.0, _FINE)
+    inputs = np.concatenate([low + _along(share, high - low) for low, high in ends])
+    fine = trace_curve(found, inputs)
+    drop, room = _excesses(fine, curve.gain[:1], margin)
+    return Swing(
+        _cross(drop[:_FINE], fine.output[:_FINE]), _cross(room[_FINE:], fine.output[_FINE:])
+    )
+
+
+def _excesses(curve: Curve, gain: Array, margin: float) -> tuple[Array, Array]:
+    """Give what is left of gain and of headroom."""
+    return curve.gain / gain - GAIN_DROP, curve.saturation - margin
+
+
+def _along(values: Array, scale: Array) -> Array:
+    return values.reshape(-1, *(1,) * np.ndim(scale)) * scale
+
+
+def _bracket(excess: Array, x: Array) -> tuple[Array, Array]:
+    k = _first_end(excess)
+    pick = [np.take_along_axis(x, np.maximum(k - 1, 0)[None], axis=0)[0],
+            np.take_along_axis(x, k[None], axis=0)[0]]  # fmt: skip
+    return pick[0], pick[1]
+
+
+def _first_end(excess: Array) -> NDArray[np.intp]:
+    ended = ~(excess > 0)
+    last = excess.shape[0] - 1
+    return np.asarray(np.where(ended.any(axis=0), np.argmax(ended, axis=0), last))
+
+
+def _cross(excess: Array, y: Array) -> Array:
+    k = _first_end(excess)
+    upper = k[None]
+    lower = np.maximum(k - 1, 0)[None]
+    a, b = (np.take_along_axis(excess, index, axis=0)[0] for index in (lower, upper))
+    ya, yb = (np.take_along_axis(y, index, axis=0)[0] for index in (lower, upper))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        share = np.where(a > b, np.clip(a / (a - b), 0.0, 1.0), 0.0)
+    return np.asarray(ya + share * (yb - ya))
+
+
+@dataclass(frozen=True, eq=False)
+class InputRange:
+    """The input common-mode range in which every transistor keeps the saturation margin.
+
+    Parameters
+    ----------
+    low, high : ndarray, shape (...)
+        Its ends [V]; equal where the margin is lacking at the intended level.
+
+    Examples
+    --------
+    >>> InputRange(np.array(0.5), np.array(1.4)).low.tolist()
+    0.5
+    """
+
+    low: Array
+    high: Array
+
+
+def measure_input_range(found: Prediction, margin: float) -> InputRange:
+    """Measure the input common-mode range.
+
+    Parameters
+    ----------
+    found : Prediction
+        The amplifier.
+    margin : float
+        Headroom that every transistor keeps [V].
+
+    Returns
+    -------
+    InputRange
+        Within the supply, and within what the tables cover.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.prediction import predict
+    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
+    >>> span = measure_input_range(found, 0.0)
+    >>> bool(span.low < 0.9 < span.high)
+    True
+    """
+    level = np.broadcast_to(found.supply.input_level.at(found.voltage), found.batch)
+    low = np.stack([level, level])
+    high = np.stack([np.zeros(found.batch), np.broadcast_to(found.voltage, found.batch)])
+    for _ in range(2):
+        x = low + _along(np.linspace(0.0, 1.0, 9), high - low)
+        bias = _solve_at(found, input_level=x)
+        excess = np.where(bias.inside, _smallest_headroom(bias) - margin, -1.0)
+        low, high = _bracket(excess, x)
+    return InputRange(*_cross(excess, x))
+
+
+def measure_slew_rate(found: Prediction) -> Array:
+    """Measure the differential slew rate: all of the tail current on one side.
+
+    The outputs are held at the common mode; the currents into what holds them charge the load
+    and the outputs' own capacitances.
+
+    Parameters
+    ----------
+    found : Prediction
+        The amplifier.
+
+    Returns
+    -------
+    ndarray, shape (...)
+        Of the differential output [V/s].
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.prediction import predict
+    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
+    >>> bool(5e6 < measure_slew_rate(found) < 50e6)
+    True
+    """
+    positive, negative = output_currents(found, OVERDRIVE)
+    load = np.asarray(found.plan.load_capacitance) + found.signal.output_capacitance
+    return np.asarray((positive + negative) / load)
+
+
+def output_currents(found: Prediction, difference: ArrayLike) -> tuple[Array, Array]:
+    """Give what the outputs deliver while they are held at the common mode.
+
+    Parameters
+    ----------
+    found : Prediction
+        The amplifier.
+    difference : array_like, shape (...)
+        Differential input [V].
+
+    Returns
+    -------
+    out, into : ndarray, shape (...)
+        Current out of `vop` and into `von` [A].
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.prediction import predict
+    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
+    >>> out, into = output_currents(found, 0.4)
+    >>> bool(10e-6 < out < 40e-6)
+    True
+    """
+    circuit = build_circuit(
+        found.plan, voltage=found.voltage, vcm=found.supply.common_mode.at(found.voltage),
+        input_level=found.supply.input_level.at(found.voltage), difference=difference,
+        reference_current=found.reference_current, loaded=False,
+    )  # fmt: skip
+    circuit.add_voltage_source("hold_p", "vop", "vcm", 0.0)
+    circuit.add_voltage_source("hold_n", "von", "vcm", 0.0)
+    bias = solve_bias(circuit, found.devices, start=found.bias)
+    return bias.source_current("hold_p"), -np.asarray(bias.source_current("hold_n"))
+
+
+def measure_third_harmonic(found: Prediction, amplitude: ArrayLike) -> Array:
+    """Measure the static third harmonic at the output of the open-loop bench.
+
+    Parameters
+    ----------
+    found : Prediction
+        The amplifier.
+    amplitude : array_like, shape (...)
+        Peak of the differential output [V].
+
+    Returns
+    -------
+    ndarray, shape (...)
+        Third harmonic over the fundamental, for a sinusoidal input that drives the output to
+        this peak [-].
+
+    Notes
+    -----
+    With ``vid = X sin t`` the harmonic is ``(2/pi) integral of y sin 3t`` over half a period; a
+    Gauss rule in ``sin t`` is exact for odd polynomials up to degree 21.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.prediction import predict
+    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
+    >>> bool(measure_third_harmonic(found, 0.2) < 0.05)
+    True
+    """
+    wanted = np.broadcast_to(np.asarray(amplitude, dtype=np.float64), found.batch)
+    peak = wanted / found.signal.dc_gain
+    for _ in range(6):
+        curve = trace_curve(found, peak[None])
+        peak = peak - (curve.output[0] - wanted) / curve.gain[0]
+    angle = (np.arange(_HARMONIC_POINTS) + 0.5) * np.pi / (2 * _HARMONIC_POINTS)
+    output = trace_curve(found, _along(np.sin(angle), peak)).output
+    parts = [np.tensordot(np.sin(k * angle), output, axes=1) * 2 / _HARMONIC_POINTS for k in (1, 3)]
+    return np.abs(parts[1] / parts[0])

@@ -1,0 +1,73 @@
+"""``gmid check``: judge a plan, edited by hand perhaps, in every condition."""
+
+from __future__ import annotations
+
+import shutil
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated
+
+import typer
+
+from gmid.cli.output import make_progress, write_csv, write_json
+
+if TYPE_CHECKING:
+    from gmid.sheet.data import Sheet
+
+
+def check_command(
+    plan: Annotated[Path, typer.Argument(help="A plan file, such as size writes.")],
+    full: Annotated[
+        bool, typer.Option("--full", help="Everything: all conditions, noise shares, elements.")
+    ] = False,
+    as_json: Annotated[bool, typer.Option("--json", help="Print the sheet as JSON, SI.")] = False,
+    as_csv: Annotated[bool, typer.Option("--csv", help="Print the checks as CSV, SI.")] = False,
+) -> None:
+    """Judge a plan in every condition.
+
+    Solves each amplifier at low, nominal and high supply in every condition and compares it with
+    its demands. Ends with exit code 3 where one is missed; without demands it reports.
+
+    Example: gmid check out/plan.toml
+    """
+    from gmid.tasks.checking import check
+
+    found = check(plan, progress=make_progress())
+    if as_json:
+        write_json(found.sheet.to_json())
+    elif as_csv:
+        from gmid.sheet.data import to_plain
+
+        write_csv([{"of": part, **to_plain(one)} for part, one in found.sheet.checks])
+    else:
+        write_screen(found.sheet, full=full)
+    if not found.is_met:
+        sys.exit(3)
+
+
+def write_screen(sheet: Sheet, *, full: bool) -> None:
+    """Print the verdict, the transistors and the loops, or everything.
+
+    Parameters
+    ----------
+    sheet : Sheet
+        What to print.
+    full : bool
+        The whole sheet.
+
+    Examples
+    --------
+    >>> from gmid.sheet.data import Sheet
+    >>> write_screen(Sheet(title="T", amplifiers=()), full=False)
+    T
+    =
+    <BLANKLINE>
+    MET: every check holds.
+    """
+    from gmid.sheet.outline import lay_out
+    from gmid.sheet.screen import lay_out_screen
+    from gmid.sheet.terminal import write_terminal
+
+    width = shutil.get_terminal_size((120, 40)).columns
+    blocks = lay_out(sheet) if full else lay_out_screen(sheet)
+    sys.stdout.write(write_terminal(blocks, width=width))

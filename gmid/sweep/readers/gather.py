@@ -1,0 +1,230 @@
+"""Gathers rows of number words into tables, for the readers that go line by line."""
+
+from __future__ import annotations
+
+import re
+from array import array
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+
+from gmid.errors import DataFault
+from gmid.sweep.numbers import is_missing, is_number, parse_number
+from gmid.sweep.readers.careful import FaultList
+from gmid.sweep.readers.headers import is_unit, split_head, strip_brackets
+from gmid.sweep.source import TextSource
+from gmid.sweep.texttable import Column, TextTable
+
+MOST_COLUMNS = 4096
+"""Columns beyond which a text is no sweep."""
+
+_PAIR = re.compile(
+    r"(?P<name>[^\s=,;\"']{1,80})\s*=\s*(?P<value>\"[^\"]*\"|'[^']*'|[^\s,;]+)"
+    r"(?=(?:[ \t]+(?P<unit>[^\s=,;]{1,20})(?=[\s,;]|$)(?!\s*=))?)"
+)
+_LONGEST_TEXT = 4000
+
+
+class Gather:
+    """Rows of one table while they are read.
+
+    Parameters
+    ----------
+    source : TextSource
+        The file.
+    names : sequence of str
+        Heads of the columns, units included.
+    faults : FaultList
+        Where what is wrong is kept.
+    suffixes : {'spice', 'si'}
+        Dialect of the suffixes of numbers.
+    is_complex : bool
+        Whether cells may be ``re,im``.
+
+    Examples
+    --------
+    >>> from gmid.sweep.source import open_bytes
+    >>> source = open_bytes(b"0 1u", name="a.txt")
+    >>> rows = Gather(source, ["vgs", "id"], FaultList(source))
+    >>> rows.add(1, ["0", "1u"])
+    >>> rows.table("columns").column("id").values.tolist()
+    [1e-06]
+    """
+
+    def __init__(
+        self, source: TextSource, names: Sequence[str], faults: FaultList, *,
+        suffixes: str = "spice", is_complex: bool = False,
+    ) -> None:  # fmt: skip
+        self.source, self.names, self.faults = source, list(names), faults
+        self._suffixes = suffixes
+        self._real = [array("d") for _ in names]
+        self._imaginary = [array("d") for _ in names] if is_complex else None
+        self.lines = array("q")
+        if len(self.names) > MOST_COLUMNS:
+            raise DataFault(
+                f"there are {len(self.names)} columns, more than any sweep has.",
+                where=source.name, hint="Check the layout of the file.",
+            )  # fmt: skip
+
+    def add(self, number: int, cells: Sequence[str]) -> None:
+        """Add one row.
+
+        Parameters
+        ----------
+        number : int
+            Its line.
+        cells : sequence of str
+            As many words as there are names, else a fault is kept.
+        """
+        if len(cells) != len(self.names):
+            self.faults.add(
+                number, f"expected {len(self.names)} values as there are names, "
+                f"found {len(cells)}.", "The file is damaged or cut off: write it again.",
+            )  # fmt: skip
+            return
+        self.lines.append(number)
+        try:
+            values: list[complex] = list(map(float, cells))
+        except ValueError:
+            values = []
+        if not values or any(value - value != 0 for value in values):
+            values = [self._cell(number, j, cell) for j, cell in enumerate(cells)]
+        for position, value in enumerate(values):
+            self._real[position].append(value.real)
+            if self._imaginary is not None:
+                self._imaginary[position].append(value.imag)
+
+    def _cell(self, number: int, position: int, cell: str) -> complex:
+        if self._imaginary is None:
+            return self._read(number, position, cell)
+        real, comma, imaginary = cell.strip("()").partition(",")
+        value = complex(self._read(number, position, real))
+        return value + 1j * self._read(number, position, imaginary) if comma else value
+
+    def _read(self, number: int, position: int, word: str) -> float:
+        try:
+            return parse_number(word, suffixes=self._suffixes)
+        except DataFault:
+            name, missing = self.names[position], is_missing(word)
+            what = "the value of" if missing else "expected a number for"
+            found = " is missing: found" if missing else ", found"
+            hint = "Simulate this point again." if missing else "The file is damaged."
+            self.faults.add(number, f"{what} {name!r}{found} {word!r}.", hint)
+            return float("nan")
+
+    def table(
+        self, layout: str, meta: Mapping[str, str] | None = None, *,
+        constants: Sequence[Column] = (), units: Mapping[str, str | None] | None = None,
+    ) -> TextTable:  # fmt: skip
+        """Make the table.
+
+        Parameters
+        ----------
+        layout : str
+            Name of the layout.
+        meta : mapping of str to str, optional
+            What the text says besides; empty entries are left out.
+        constants : sequence of Column
+            Of one value each, to be spread over the rows and put first.
+        units : mapping of str to str or None, optional
+            Units by name; taken from the heads when not given.
+
+        Returns
+        -------
+        TextTable
+            With the rows so far.
+        """
+        columns: list[Column] = []
+        size = len(self.lines)
+        own = {name if units is not None else split_head(name)[0] for name in self.names}
+        for constant in constants:
+            if constant.name not in own:
+                spread = np.broadcast_to(constant.values, (size,))
+                columns.append(Column(constant.name, constant.unit, spread))
+        for position, head in enumerate(self.names):
+            name, unit = (head, units.get(head)) if units is not None else split_head(head)
+            values: Any = np.array(self._real[position])
+            if self._imaginary is not None:
+                values = values + 1j * np.array(self._imaginary[position])
+                if not values.imag.any():
+                    values = values.real.copy()
+            columns.append(Column(name, unit, values))
+        lines = np.array(self.lines, dtype=np.int64)
+        return TextTable(
+            self.source.name, columns, first_line=int(lines[0]) if size else 1, lines=lines,
+            meta={key: text for key, text in (meta or {}).items() if text}, layout=layout,
+        )  # fmt: skip
+
+
+def find_pairs(text: str, *, suffixes: str = "spice") -> list[Column]:
+    """Find ``name = value unit`` in a comment or a title.
+
+    Parameters
+    ----------
+    text : str
+        One or several lines.
+    suffixes : {'spice', 'si'}
+        Dialect of the suffixes of numbers.
+
+    Returns
+    -------
+    list of Column
+        One value each, a number with the unit that is spelled behind it, or a word.
+
+    Examples
+    --------
+    >>> found = find_pairs("corner=tt T=27 C  L=0.18 um Vdd=300m (Run: 1/6)")
+    >>> [(column.name, column.unit, column.values[0].item()) for column in found]
+    [('corner', None, 'tt'), ('T', 'C', 27.0), ('L', 'um', 0.18), ('Vdd', None, 0.3)]
+    """
+    found: dict[str, Column] = {}
+    for match in _PAIR.finditer(text[:_LONGEST_TEXT]):
+        word = match["value"].strip("\"'")
+        unit = strip_brackets(match["unit"]) if match["unit"] else None
+        if unit is not None and not is_unit(unit):
+            unit = None
+        if is_number(word, suffixes=suffixes):
+            value = Column(match["name"], unit, np.array([parse_number(word, suffixes=suffixes)]))
+        elif word:
+            value = Column(match["name"], None, np.array([word]))
+        else:
+            continue
+        found.setdefault(match["name"], value)
+    return list(found.values())
+
+
+def check_tables(source: TextSource, tables: Sequence[TextTable]) -> list[TextTable]:
+    """Give the tables that have rows.
+
+    Parameters
+    ----------
+    source : TextSource
+        For messages.
+    tables : sequence of TextTable
+        As read.
+
+    Returns
+    -------
+    list of TextTable
+        At least one.
+
+    Raises
+    ------
+    DataFault
+        If there is no row at all.
+
+    Examples
+    --------
+    >>> from gmid.sweep.source import open_bytes
+    >>> check_tables(open_bytes(b"x", name="a.txt"), [])
+    Traceback (most recent call last):
+    ...
+    gmid.errors.DataFault: a.txt: there are no rows. Did the simulation run to its end?
+    """
+    filled = [table for table in tables if table.rows]
+    if not filled:
+        raise DataFault(
+            "there are no rows.", where=source.name, hint="Did the simulation run to its end?"
+        )
+    return filled

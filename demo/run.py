@@ -1,4 +1,4 @@
-"""The demo, from nothing: make an environment, import the demo sweeps, ask the table, draw it.
+"""The demo, from nothing: import the sweeps, ask the table, size the flow meter's filter.
 
     python3 demo/run.py
 
@@ -34,7 +34,9 @@ def main() -> None:
     }  # fmt: skip
     for name, words in charts.items():
         run(python, "chart", table, *words, "-o", OUT / name, "--force")
-    print(f"\nDone. The table and the charts are in {OUT.relative_to(ROOT)}.")
+    run(python, "filter", "demo/flow_meter.toml")
+    run(python, "check", "demo/channel_amplifier_plan.toml")
+    print(f"\nDone. The charts are in {OUT.relative_to(ROOT)}.")
 
 
 def run(python: Path, *arguments: object) -> None:

@@ -109,7 +109,7 @@ BROKEN: dict[str, tuple[str, Callable[[bytes], bytes], str]] = {
     "trace no end": ("typed-trace", swap(b"END", b""), "the file has no END"),
     "trace no value": ("typed-trace", upto(b"VALUE"), "there is no VALUE section"),
     "trace value lost": ("typed-trace", lambda d: re.sub(rb'"M0:gm" \d\S+\n', b"", d, count=1),
-                         "expected 'M0:gm', found"),
+                         "has 4 values for 5 names"),
     "trace bracket": ("typed-trace", swap(b'"units" "V"\n)', b'"units" "V"\n'),
          "is not closed|expected"),
     "trace number": ("typed-trace", swap(b'"dc" 2.9', b'"dc" x2.9'), "expected a number for 'dc'"),

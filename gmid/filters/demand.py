@@ -39,6 +39,9 @@ from gmid.filters.spec_checks import name_key
 from gmid.network import find_poles
 from gmid.network.pencil import FloatArray
 
+Split = str | Mapping[str, float]
+"""One of `SPLITS`, or the proportions of gm_total by position."""
+
 SPLITS = ("each", "alike")
 """Whether every amplifier has its own gm_total, or all the same."""
 
@@ -49,7 +52,7 @@ _RETRIES = 8
 def demands_of(
     spec: FilterSpec, tolerance: Tolerance, passives: Passives | None = None, *,
     realisation: Realisation | None = None, intrinsic_gain: float | None = None,
-    phase_margin: float = 60.0, split: str = "each",
+    phase_margin: float = 60.0, split: Split = "each",
     own: AmplifierModel | Mapping[str, AmplifierModel] | None = None, noise_factor: float = 5.0,
     temperature: float = 27.0, tuning_bits: int | None = None, mismatch: float = 0.0,
     divisor: float = WEAK_INVERSION, amplifier_spread: float = 0.1,
@@ -72,8 +75,9 @@ def demands_of(
         tenth more than with infinite gain.
     phase_margin : float
         Of each amplifier's own loop [deg].
-    split : str
-        ``each``: error split for the least sum of gm_total; ``alike``: one gm_total for all.
+    split : str or mapping of str to float
+        ``each``: error split for the least sum of gm_total; ``alike``: one gm_total for all; a
+        mapping: gm_total in these proportions, by position.
     own : AmplifierModel or mapping of str to AmplifierModel, optional
         Own input and output capacitances of the amplifiers, as far as they are known.
     noise_factor : float
@@ -110,7 +114,7 @@ def demands_of(
     >>> bool(0.97 < found.point.dense <= 1.0)
     True
     """
-    if split not in SPLITS:
+    if isinstance(split, str) and split not in SPLITS:
         raise UsageFault(f"split = {split!r}?", hint=f"Choose {' or '.join(SPLITS)}.")
     given = passives or Passives()
     known: Family | None = None
@@ -136,7 +140,7 @@ def demands_of(
 
 
 def _choose_level(
-    spec: FilterSpec, tolerance: Tolerance, passives: Passives, *, split: str,
+    spec: FilterSpec, tolerance: Tolerance, passives: Passives, *, split: Split,
     phase_margin: float, noise_factor: float, temperature: float,
     own: AmplifierModel | Mapping[str, AmplifierModel] | None,
 ) -> tuple[Realisation, Family | None]:  # fmt: skip
@@ -226,9 +230,12 @@ class _Search:
             for ports in self.plane.ports
         )
 
-    def weight(self, split: str) -> Family:
+    def weight(self, split: Split) -> Family:
         """Weight the amplifiers to the least sum of gm_total, or leave them alike."""
-        return self.plane.split(self.family, self.guess) if split == "each" else self.family
+        if isinstance(split, str):
+            return self.plane.split(self.family, self.guess) if split == "each" else self.family
+        shares = np.array([split[place.name] for place in self.realisation.amplifiers])
+        return self.family.weighted(shares.max() / shares)
 
     def adopt(self, known: Family) -> Family:
         """Take over the weights found at another impedance level, which leaves them alone."""

@@ -220,7 +220,7 @@ def spell_plan(plan: AmplifierPlan) -> dict[str, Any]:
     """
     found: dict[str, Any] = {
         "name": plan.name,
-        "positions": list(plan.positions),
+        **({"positions": list(plan.positions)} if plan.positions else {}),
         "multiple": int(plan.multiple),
         "input_pair": plan.input_pair,
         "output": plan.output,

@@ -11,6 +11,7 @@ from gmid.amplifier.checks import KINDS, Check, judge, spell_condition
 from gmid.amplifier.places import PLACES
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Supply
 from gmid.amplifier.prediction import NOISE_FREQUENCIES, Prediction, predict
+from gmid.amplifier.topology import NO_RESISTOR
 from gmid.circuit.circuit import Circuit
 from gmid.circuit.elements import Capacitor, Resistor, Transistor
 from gmid.condition import Condition
@@ -164,7 +165,7 @@ def fill_amplifier(found: Reviewed) -> AmplifierSheet:
         output=plan.output,
         common_mode_sense=plan.common_mode_sense,
         load_capacitance=float(np.asarray(plan.load_capacitance)),
-        load_resistance=load if np.isfinite(load) else None,
+        load_resistance=load if load < NO_RESISTOR else None,
         demands={
             name: Demand(value=one.value, unit=KINDS[name].unit, because=one.because, at=one.at)
             for name, one in plan.demands.items()
@@ -294,7 +295,7 @@ def _fill_conditions(found: Reviewed, case: Prediction) -> list[ConditionRow]:
             power=pick(case.power, index),
             slew_rate=pick(case.slew_rate, index),
             settling_time=pick(case.settling_time, index),
-            output_swing=pick(swing.peak, index),
+            output_swing=max(pick(swing.peak, index), 0.0),
             swing_by_gain=pick(swing.by_gain, index),
             swing_by_saturation=pick(swing.by_saturation, index),
             control_share=pick(case.balance, index),

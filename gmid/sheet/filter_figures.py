@@ -58,6 +58,62 @@ def draw_filter_figures(found: FilterDemands) -> dict[str, bytes]:
         }
 
 
+def draw_filter(found: FilterDemands) -> dict[str, str]:
+    """Draw the figures of a filter as text.
+
+    Parameters
+    ----------
+    found : FilterDemands
+        The filter.
+
+    Returns
+    -------
+    dict of str to str
+        As `draw_filter_figures`.
+
+    Examples
+    --------
+    >>> from gmid.filters import FilterSpec, Tolerance
+    >>> from gmid.filters.demand import demands_of
+    >>> spec = FilterSpec(response="butterworth", order=2, edge=1e6, capacitor=2e-12)
+    >>> found = demands_of(spec, Tolerance(passband_db=0.2, counts="tuned-shape"))
+    >>> "<svg" in draw_filter(found)["filter_response"]
+    True
+    """
+    return {name: drawn.decode() for name, drawn in draw_filter_figures(found).items()}
+
+
+def draw_realised(found: FilterDemands, curves: Sequence[ResponseCurve]) -> str:
+    """Draw the response with the real amplifiers as text.
+
+    Parameters
+    ----------
+    found : FilterDemands
+        The filter.
+    curves : sequence of ResponseCurve
+        In every condition.
+
+    Returns
+    -------
+    str
+        SVG.
+
+    Examples
+    --------
+    >>> from gmid.filters import FilterSpec, Tolerance
+    >>> from gmid.filters.demand import demands_of
+    >>> from gmid.filters.demand_check import check_filter
+    >>> from gmid.filters.demand_report import trace_response
+    >>> spec = FilterSpec(response="butterworth", order=2, edge=1e6, capacitor=2e-12)
+    >>> found = demands_of(spec, Tolerance(passband_db=0.2, counts="tuned-shape"))
+    >>> curve = trace_response(found, check_filter(found, found.models))
+    >>> "<svg" in draw_realised(found, [curve])
+    True
+    """
+    with drawing():
+        return save_figure(draw_response(found, curves), "svg").decode()
+
+
 def _name_corner(rscale: float) -> str:
     if rscale == 1.0:
         return "amplifiers as demanded"

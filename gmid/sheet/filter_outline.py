@@ -8,7 +8,6 @@ from gmid.sheet.words import spell_value
 
 FILTER_PICTURES = (
     ("filter_response", "Response with its mask: ideal, and with the real amplifiers."),
-    ("filter_deviation", "Deviation from the ideal response in the passband."),
     ("filter_trade_off", "What gain and bandwidth the amplifiers need, one against the other."),
 )
 """Figures of a filter, with their captions."""

@@ -168,7 +168,11 @@ def lay_out_amplifier(one: AmplifierSheet, sheet: Sheet) -> list[Block]:
     blocks += _lay_out_shares(one)
     blocks += _pictures(sheet, one.name, (
         ("open_loop", "Gain into the load, every condition at the nominal supply."),
-        ("common_mode", "Gain of the common-mode loop, every condition at the nominal supply."),
+        (
+            "common_mode",
+            "Gain of the common-mode loop, every condition at the nominal supply, as the bench "
+            "measures it; and the worst one without the load of the bench's probe.",
+        ),
         ("bias", "gm/Id over normalised current, with the points chosen."),
         ("noise", "Input noise density, and the places that make most of it."),
     ))  # fmt: skip
@@ -210,8 +214,7 @@ def describe_amplifier(one: AmplifierSheet) -> str:
         f"Fully differential current-mirror amplifier with {one.input_pair}-channel input and "
         f"{one.output} outputs; common mode sensed by {FORMS[one.common_mode_sense]}.",
         f"Each output drives {load}. Gate area {one.gate_area * 1e12:.4g} um^2.",
-        f"Inputs work from {one.input_range[0]:.3g} V to {one.input_range[1]:.3g} V in every "
-        "condition.",
+        _describe_input_range(one.input_range),
     ]
     if one.positions:
         parts.insert(0, f"At {', '.join(one.positions)} of the filter.")
@@ -225,6 +228,13 @@ def describe_amplifier(one: AmplifierSheet) -> str:
     if one.offset_sigma is not None:
         parts.append(f"Input offset {spell_value(one.offset_sigma, 'V', 3)} (one sigma).")
     return " ".join(parts)
+
+
+def _describe_input_range(ends: tuple[float, float]) -> str:
+    low, high = ends
+    if not low <= high:
+        return "No input common mode keeps the saturation margin in every condition."
+    return f"Inputs work from {low:.3g} V to {high:.3g} V in every condition."
 
 
 def _lay_out_demands(one: AmplifierSheet) -> list[Block]:

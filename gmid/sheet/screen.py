@@ -51,15 +51,19 @@ def _short_transistor_grid(one: AmplifierSheet) -> Grid:
             row.role, row.device, spell_value(row.length, "m"),
             f"{row.count}" + (f"x{row.stack}" if row.stack > 1 else ""), spell_value(row.id, "A"),
             f"{row.gm_over_id:.3g}", spell_value(row.vds, "V", 3), spell_value(row.vdsat, "V", 3),
-            spell_value(row.headroom, "V", 3), spell_value(worst.worst_headroom, "V", 3),
+            spell_value(worst.worst_headroom, "V", 3),
             worst.worst_condition,
         ))  # fmt: skip
     heads = (
-        "place", "device", "L", "units", "id", "gm/Id", "vds", "vdsat", "headroom", "worst",
-        "worst in",
+        "place", "device", "L", "units", "id", "gm/Id", "vds", "vdsat", "headroom",
+        "at least in",
     )  # fmt: skip
     first = one.conditions[0]
-    return Grid(heads, tuple(rows), f"In {first.corner}/{first.temperature:g}, nominal supply.")
+    caption = (
+        f"In {first.corner}/{first.temperature:g} at the nominal supply; headroom, vds less vdsat, "
+        "is the least of all conditions and supplies."
+    )
+    return Grid(heads, tuple(rows), caption)
 
 
 def _describe_loops(one: AmplifierSheet) -> str:

@@ -4,6 +4,9 @@ from __future__ import annotations
 
 from gmid.quantity import format_quantity
 
+_FLOORS = {"V": 5e-10, "deg": 5e-7, "dB": 5e-7}
+"""What is smaller than rounding of a solution is zero."""
+
 
 def spell_name(name: str) -> str:
     """Write the name of a check as words.
@@ -53,4 +56,5 @@ def spell_value(value: float | None, unit: str, digits: int = 4) -> str:
         return "-"
     if value in (float("inf"), float("-inf")):
         return "none"
-    return format_quantity(value, unit, digits=digits)
+    floor = _FLOORS.get(unit, 0.0)
+    return format_quantity(0.0 if abs(value) < floor else value, unit, digits=digits)

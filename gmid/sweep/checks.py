@@ -7,6 +7,8 @@ conductances may rule.
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -19,6 +21,9 @@ from gmid.sweep.rows import Note, describe_point
 
 THRESHOLD_CURRENT = 100e-9
 """Constant-current threshold: this times W/L [A], common practice."""
+
+_LINES = 500
+"""Lines along an axis on which a slope is compared."""
 
 _ROUNDING = 3e-5
 """Relative slack for rounded digits and solver tolerance."""
@@ -189,19 +194,20 @@ def _positive(
 def _consistent(
     sweep: Sweep, on: NDArray[np.bool_], faults: list[GmidError], notes: list[Note]
 ) -> None:
-    """Compare gm, gds and gmb with what the current says."""
+    """Compare gm, gds and gmb with what the current says, at the median of many lines."""
     for name, axis, position in (("gm", "vgs", 3), ("gds", "vds", 2), ("gmb", "vsb", 1)):
         grid = getattr(sweep, axis)
         if name not in sweep or name in sweep.derived or grid.size < (3 if name == "gmb" else 4):
             continue
-        slope = SLOPES[name](sweep)
-        usable = on & (slope > 0) & (sweep[name] > 0)
+        thin, conducts = _thinned(sweep, on, name, position)
+        slope = SLOPES[name](thin)
+        usable = conducts & (slope > 0) & (thin[name] > 0)
         if name != "gm":
-            usable = usable & (sweep.vds > 0.1)[:, None]
+            usable = usable & (thin.vds > 0.1)[:, None]
         usable = _inner(usable, position)
         if np.count_nonzero(usable) < 5:
             continue
-        ratio = float(np.median(sweep[name][usable] / slope[usable]))
+        ratio = float(np.median(thin[name][usable] / slope[usable]))
         decade = round(float(np.log10(ratio)))
         pure = abs(np.log10(ratio) - decade) < 0.06
         if decade and decade % 3 == 0 and pure:
@@ -220,6 +226,21 @@ def _consistent(
                     f"to take the slope instead: {name} = {{ derived = true }}.",
                 )
             )
+
+
+def _thinned(
+    sweep: Sweep, on: NDArray[np.bool_], name: str, position: int
+) -> tuple[Sweep, NDArray[np.bool_]]:
+    """Keep one axis whole and so much of the others as a sound median needs."""
+    index = [np.arange(size) for size in sweep.shape]
+    others = [k for k in range(4) if k != position]
+    while np.prod([index[k].size for k in others]) > _LINES:
+        longest = max(others, key=lambda k: index[k].size)
+        index[longest] = index[longest][::2]
+    grid = np.ix_(*index)
+    axes = {axis: getattr(sweep, axis)[kept] for axis, kept in zip(AXES, index, strict=True)}
+    values = {key: sweep[key][grid] for key in ("id", name)}
+    return replace(sweep, values=values, **axes), on[grid]
 
 
 def _inner(mask: NDArray[np.bool_], position: int) -> NDArray[np.bool_]:

@@ -15,8 +15,8 @@ from pathlib import Path
 
 from gmid.nomenclature import SWEEP_QUANTITIES
 from gmid.sweep.inspecting import ColumnView, GroupView, Inspection
-from gmid.sweep.readers.gather import find_pairs
 from gmid.sweep.readers.headers import is_unit
+from gmid.sweep.readers.pairs import find_pairs
 
 _LENGTH_NAME = re.compile(r"(?<![A-Za-z])[lL](\d+(?:[p.]\d+)?)(um|nm|u|n)?(?![A-Za-z0-9])")
 _WORDS = {"nmos": "n", "nch": "n", "nfet": "n", "n": "n", "pmos": "p", "pch": "p", "pfet": "p",

@@ -20,6 +20,7 @@ from gmid.sweep.readers import (
     stepped,
     typed_trace,
 )
+from gmid.sweep.readers.careful import ParametersBetween
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
@@ -105,7 +106,8 @@ def read_text(source: TextSource, layout: str = "auto", **options: Any) -> list[
     >>> [(column.name, column.unit) for column in table.columns], table.layout
     ([('vgs', 'V'), ('id', 'uA')], 'csv')
     """
-    if layout == "auto":
+    is_free = layout == "auto"
+    if is_free:
         judged = recognise(source)
         if not judged or judged[0][1] < _SURE:
             raise _unrecognised(source)
@@ -122,7 +124,12 @@ def read_text(source: TextSource, layout: str = "auto", **options: Any) -> list[
                 f"the layout {layout!r} has no option {name!r}.", where=source.name,
                 hint=advise(name, known),
             )  # fmt: skip
-    tables: list[TextTable] = read(source, **options)
+    try:
+        tables: list[TextTable] = read(source, **options)
+    except ParametersBetween:
+        if not is_free or layout != columns.LAYOUT or "columns" in options:
+            raise
+        tables = blocks.read(source, **options)
     return tables
 
 

@@ -7,8 +7,9 @@ import re
 from gmid.errors import DataFault
 from gmid.sweep.numbers import is_missing, is_number
 from gmid.sweep.readers.careful import FaultList
-from gmid.sweep.readers.gather import Gather, check_tables, find_pairs
+from gmid.sweep.readers.gather import Gather, check_tables
 from gmid.sweep.readers.headers import join_units
+from gmid.sweep.readers.pairs import find_pairs
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import Column, TextTable
 

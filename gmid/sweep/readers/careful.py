@@ -12,12 +12,17 @@ from numpy.typing import NDArray
 
 from gmid.errors import DataFault, GmidError, raise_faults
 from gmid.sweep.numbers import is_ambiguous, is_missing, is_number, parse_number
+from gmid.sweep.readers.pairs import find_pairs
 from gmid.sweep.readers.rows import Rows, has_cut_number
 from gmid.sweep.readers.scan import Shape, is_comment, normalise_number, split_cells
 from gmid.sweep.source import TextSource
 
 MOST_FAULTS = 20
 """Faults told of one file; a reader stops after these."""
+
+
+class ParametersBetween(DataFault):
+    """Comments with parameters between the rows of what seemed one table."""
 
 
 class FaultList:
@@ -137,6 +142,8 @@ class _Reading:
         last_number = 0
         for number, text in self._source.lines(self._shape.first_line):
             if not text.strip() or is_comment(text, self._shape.separator):
+                if "=" in text and self._lines and find_pairs(text):
+                    raise self._between(number, text)
                 continue
             self._last = [*self._last[-29:], text]
             last_number = number
@@ -150,6 +157,13 @@ class _Reading:
             for column in self._values
         ]
         return Rows(columns, int(lines[0]), lines, self._notes)
+
+    def _between(self, number: int, text: str) -> ParametersBetween:
+        return ParametersBetween(
+            f"a comment with parameters stands between the rows: {_shorten(text)}.",
+            where=self._source.where(number),
+            hint='Read the file in blocks: layout = "blocks".',
+        )
 
     def _read_line(self, number: int, text: str) -> bool:
         """Take one line; False when reading on makes no sense."""

@@ -6,7 +6,9 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from gmid.errors import DataFault
 from gmid.sweep.readers.careful import read_rows_slowly
+from gmid.sweep.readers.gather import MOST_COLUMNS
 from gmid.sweep.readers.rows import read_rows_fast
 from gmid.sweep.readers.scan import Shape, name_columns, settle_header
 from gmid.sweep.source import TextSource
@@ -53,6 +55,11 @@ def read_shape(
     >>> table.names, table.meta["comment"]
     (['vgs', 'id'], '# tt')
     """
+    if shape.width > MOST_COLUMNS:
+        raise DataFault(
+            f"there are {shape.width} columns, more than any sweep has.",
+            where=source.where(shape.first_line), hint="Check the layout of the file.",
+        )  # fmt: skip
     heads, shape = settle_header(source, shape, columns)
     rows = read_rows_fast(source, shape) or read_rows_slowly(
         source, shape, heads, suffixes=suffixes

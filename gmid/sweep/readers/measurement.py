@@ -71,29 +71,38 @@ def read(source: TextSource, *, suffixes: str = "spice") -> list[TextTable]:
     >>> table.names, table.column("id").values.tolist(), table.line_of(0)
     (['index', 'lch', 'id', 'alter#'], [1e-05], 5)
     """
-    lines = [(number, text) for number, text in source.lines() if text.strip()]
-    titles = [text for _, text in lines if re.match(r"\s*[$.]", text)]
-    body = [(number, text) for number, text in lines if not re.match(r"\s*[$.*]", text)]
-    title = " ".join(re.sub(r"^\s*\.TITLE\s*", "", text).strip().strip("'\"") for text in titles
-                     if text.lstrip().upper().startswith(".TITLE"))  # fmt: skip
-    meta = {"title": title, "header": " ".join(text.strip() for text in titles)}
+    titles: list[str] = []
     faults = FaultList(source)
-    if any(_LAST in text.lower() for _, text in body):
-        rows = _read_rows(source, body, faults, suffixes)
+    if _LAST in source.head.lower():
+        rows = _read_rows(source, _body(source, titles), faults, suffixes)
     else:
-        rows = _read_records(source, body, faults, suffixes)
+        rows = _read_records(source, _body(source, titles), faults, suffixes)
     faults.finish()
+    title = " ".join(re.sub(r"^\.TITLE\s*", "", text, flags=re.I).strip("'\"") for text in titles
+                     if text.upper().startswith(".TITLE"))  # fmt: skip
+    meta = {"title": title, "header": " ".join(titles)}
     return check_tables(source, [rows.table(LAYOUT, meta, units={})])
 
 
-def _words(body: list[tuple[int, str]]) -> Iterator[tuple[int, str]]:
+def _body(source: TextSource, titles: list[str]) -> Iterator[tuple[int, str]]:
+    """Iterate over the lines that are no titles or comments; the first titles are kept."""
+    for number, text in source.lines():
+        stripped = text.strip()
+        if stripped[:1] in ("$", "."):
+            if len(titles) < 20:
+                titles.append(stripped)
+        elif stripped and not stripped.startswith("*"):
+            yield number, stripped
+
+
+def _words(body: Iterator[tuple[int, str]]) -> Iterator[tuple[int, str]]:
     for number, text in body:
         for word in text.split():
             yield number, word
 
 
 def _read_rows(
-    source: TextSource, body: list[tuple[int, str]], faults: FaultList, suffixes: str
+    source: TextSource, body: Iterator[tuple[int, str]], faults: FaultList, suffixes: str
 ) -> Gather:
     """Read names until the last one, then rows of as many words."""
     words = _words(body)
@@ -129,7 +138,7 @@ def _read_rows(
 
 
 def _read_records(
-    source: TextSource, body: list[tuple[int, str]], faults: FaultList, suffixes: str
+    source: TextSource, body: Iterator[tuple[int, str]], faults: FaultList, suffixes: str
 ) -> Gather:
     """Read records of ``name = value`` lines, each beginning with the index."""
     records: list[tuple[int, dict[str, str]]] = []

@@ -85,7 +85,7 @@ def read(
     """
     start = None if record is None else _compile(record)
     faults = FaultList(source)
-    records: list[tuple[int, dict[str, str]]] = []
+    records = _Records(source, faults, suffixes)
     titles: list[str] = []
     devices: list[str] = []
     begun = False
@@ -99,48 +99,63 @@ def read(
             continue
         found = _side_entries(text, devices) or _found(text, faults, number)
         if not found:
-            titles.append(text.strip())
+            titles = [*titles, text.strip()][:20]
             devices = devices if not text.strip().strip("-=") else []
         for name, value in found:
-            repeated = bool(records) and name in records[-1][1] and start is None
-            if not records or begun or repeated:
-                records.append((number, {}))
+            if begun or (start is None and name in records.entries):
+                records.close()
                 begun = False
-            if name in records[-1][1]:
-                faults.add(
-                    number, f"{name!r} stands twice in one record.",
-                    "Give the pattern of the line that begins a record: record = '...'.",
-                )  # fmt: skip
-            records[-1][1][name] = value
+            records.add(number, name, value)
         if faults.is_full:
             break
-    table = _table(source, records, faults, suffixes, titles)
-    return check_tables(source, [table])
-
-
-def _table(
-    source: TextSource, records: list[tuple[int, dict[str, str]]], faults: FaultList,
-    suffixes: str, titles: list[str],
-) -> TextTable:  # fmt: skip
-    names = list(records[0][1]) if records else []
-    rows = Gather(source, names, faults, suffixes=suffixes)
-    for number, record in records:
-        lacking = [name for name in names if name not in record]
-        extra = [name for name in record if name not in names]
-        if faults.is_full:
-            break
-        if lacking:
-            faults.add(number, f"the record that begins here lacks {lacking[0]!r}.",
-                       "The file is cut off, or the start of a record is not found: "
-                       "record = '...'.")  # fmt: skip
-        elif extra:
-            faults.add(number, f"the record that begins here has {extra[0]!r}, "
-                       "which the first lacks.",
-                       "Print the same quantities at every bias point.")  # fmt: skip
-        else:
-            rows.add(number, [record[name] for name in names])
+    records.close()
     faults.finish()
-    return rows.table(LAYOUT, {"title": "\n".join(titles[:20])}, units={})
+    meta = {"title": "\n".join(titles)}
+    return check_tables(source, [] if records.rows is None else [
+        records.rows.table(LAYOUT, meta, units={})
+    ])  # fmt: skip
+
+
+class _Records:
+    """The record being read, and the rows made of those before it."""
+
+    def __init__(self, source: TextSource, faults: FaultList, suffixes: str) -> None:
+        self.source, self.faults, self.suffixes = source, faults, suffixes
+        self.rows: Gather | None = None
+        self.entries: dict[str, str] = {}
+        self.start = 0
+
+    def add(self, number: int, name: str, value: str) -> None:
+        self.start = self.start if self.entries else number
+        if name in self.entries:
+            self.faults.add(
+                number, f"{name!r} stands twice in one record.",
+                "Give the pattern of the line that begins a record: record = '...'.",
+            )  # fmt: skip
+        self.entries[name] = value
+
+    def close(self) -> None:
+        """End the record: it must hold what the first one holds."""
+        entries, self.entries = self.entries, {}
+        if not entries or self.faults.is_full:
+            return
+        if self.rows is None:
+            self.rows = Gather(self.source, list(entries), self.faults, suffixes=self.suffixes)
+        names = self.rows.names
+        lacking = [name for name in names if name not in entries]
+        extra = [name for name in entries if name not in names]
+        if lacking:
+            self.faults.add(
+                self.start, f"the record that begins here lacks {lacking[0]!r}.",
+                "The file is cut off, or the start of a record is not found: record = '...'.",
+            )  # fmt: skip
+        elif extra:
+            self.faults.add(
+                self.start, f"the record that begins here has {extra[0]!r}, which the first lacks.",
+                "Print the same quantities at every bias point.",
+            )  # fmt: skip
+        else:
+            self.rows.add(self.start, [entries[name] for name in names])
 
 
 def _compile(record: str) -> re.Pattern[str]:
@@ -151,6 +166,11 @@ def _compile(record: str) -> re.Pattern[str]:
 
 
 def _entry(text: str) -> tuple[str, str] | None:
+    name, sign, value = text.partition("=")
+    name, value = name.strip(), value.strip()
+    plain = sign and name and value and not any(mark in name + value for mark in " =\t")
+    if plain and (is_number(value) or is_missing(value)):
+        return name, value
     match = _ENTRY.fullmatch(text)
     if match is None or not (is_number(match["value"]) or is_missing(match["value"])):
         return None

@@ -173,15 +173,16 @@ class _Reading:
         self.above = []
 
     def _is_row(self, text: str) -> bool:
-        words = _split(text)
         if self.page is not None and self.page.indexed:
-            return words[0].isdigit()
-        return is_number(words[0], suffixes=self.suffixes) or is_missing(words[0])
+            return text.split(None, 1)[0].isdigit()
+        word = _split(text)[0]
+        return is_number(word, suffixes=self.suffixes) or is_missing(word)
 
     def _row(self, number: int, text: str) -> None:
         assert self.page is not None
-        words = _split(text)
-        page = self.page
+        page, words = self.page, text.split()
+        if len(words) != len(page.names) + page.indexed or "," in text:
+            words = _split(text)
         if page.indexed:
             index = int(words.pop(0)[:12])
             if not page.index:

@@ -9,7 +9,8 @@ import re
 from gmid.errors import DataFault
 from gmid.sweep.numbers import parse_number
 from gmid.sweep.readers.careful import FaultList
-from gmid.sweep.readers.gather import Gather, check_tables, find_pairs
+from gmid.sweep.readers.gather import Gather, check_tables
+from gmid.sweep.readers.pairs import find_pairs
 from gmid.sweep.readers.scan import split_cells
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable

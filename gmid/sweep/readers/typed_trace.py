@@ -155,6 +155,7 @@ class _Points:
         self.units = {name: types.units.get(kind) for name, kind in declared}
         self.rows = Gather(source, self.names, faults, suffixes=suffixes, is_complex=True)
         self.cells: list[str] = []
+        self.known: dict[str, str] = {}
         self.start = 0
 
     def run(self, lines: Iterator[tuple[int, str]], meta: dict[str, str]) -> TextTable:
@@ -176,10 +177,8 @@ class _Points:
         return self.rows.table(LAYOUT, meta, units=self.units)
 
     def _line(self, number: int, text: str) -> None:
-        match = _ENTRY.match(text)
-        rest = text if match is None else match["rest"]
-        if match is not None:
-            name = unquote(match["name"])
+        name, rest = self._taken_apart(text)
+        if name is not None:
             if self.cells and name == self.names[0]:
                 self._point()
             self.start = self.start if self.cells else number
@@ -189,7 +188,21 @@ class _Points:
                 wanted = repr(self.names[place]) if place < len(self.names) else "the next point"
                 self.faults.add(number, f"expected {wanted}, found {name!r}.",
                                 "Values are missing or doubled: write the file again.")  # fmt: skip
-        self.cells += _PAIR.sub(r"\1,\2", rest).split()
+        self.cells += _PAIR.sub(r"\1,\2", rest).split() if "(" in rest else rest.split()
+
+    def _taken_apart(self, text: str) -> tuple[str | None, str]:
+        """Split a line into a name, if it has one, and values."""
+        raw, quote, rest = text.rpartition('" ')
+        name = self.known.get(raw)
+        if name is not None and quote:
+            return name, rest
+        match = _ENTRY.match(text)
+        if match is None:
+            return None, text
+        name = unquote(match["name"])
+        if name in self.units:
+            self.known[match["name"][:-1]] = name
+        return name, match["rest"]
 
     def _point(self) -> None:
         if len(self.cells) != len(self.names):
@@ -235,10 +248,14 @@ def _read_point(
                 units[name] = None if kind is None else types.units.get(unquote(kind["name"]))
             continue
         values: list[str] = []
-        while position < len(body) and body[position][1].strip() != ")":
+        while position < len(body) and not body[position][1].strip().startswith(")"):
             values += _PAIR.sub(r"\1,\2", body[position][1]).split()
             position += 1
-        position += 1
+        depth = 1
+        while position < len(body) and depth > 0:
+            text = re.sub(r'"(?:[^"\\]|\\.)*"', "", body[position][1])
+            depth += text.count("(") - text.count(")")
+            position += 1
         if len(values) != len(fields):
             faults.add(number, f"the record {name!r} has {len(values)} values for {len(fields)} "
                        "fields.", "The file is damaged or cut off: write it again.")  # fmt: skip

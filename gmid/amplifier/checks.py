@@ -111,7 +111,7 @@ KINDS = {
         Kind("saturation", "V", True, lambda p, r, m: p.saturation),
         Kind("smallest_control_share", "", True, lambda p, r, m: p.balance),
         Kind("largest_control_share", "", False, lambda p, r, m: p.balance),
-        Kind("common_mode_phase_margin", "deg", True, lambda p, r, m: p.common_mode.phase_margin),
+        Kind("common_mode_phase_margin", "deg", True, lambda p, r, m: p.loop_margin),
         Kind("common_mode_error", "V", False, lambda p, r, m: np.abs(p.settled_error)),
     )
 }  # fmt: skip

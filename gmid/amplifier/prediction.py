@@ -6,7 +6,7 @@ Every figure is computed when it is read, so that a search pays only for what it
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
@@ -28,6 +28,7 @@ from gmid.amplifier.signal import (
     CommonModeLoop,
     SignalPath,
     measure_common_mode,
+    measure_margin,
     measure_noise,
     measure_signal,
 )
@@ -81,6 +82,7 @@ class Prediction:
     voltage: Array
     reference_current: Array
     bias: Bias
+    _swings: dict[float, Swing] = field(default_factory=dict, init=False, repr=False)
 
     @property
     def circuit(self) -> Circuit:
@@ -135,6 +137,23 @@ class Prediction:
         return measure_common_mode(
             self.common_half, self.settled_error, loop_network=self._take_common((PROBE,))
         )
+
+    @cached_property
+    def loop_margin(self) -> Array:
+        """Phase margin of the common-mode loop itself, which is what stability goes by [deg].
+
+        The bench's probe does not see the load of the gates it drives, so its margin can be far
+        too good; here both a voltage and a current are injected.  The smaller of the margins
+        with and without the load resistors, since in a filter those carry no common-mode current.
+        """
+        network = self.bias.linearise(drives=(PROBE,), noise=False)
+        margins = []
+        for loaded in (True, False):
+            if not loaded:
+                network = network.with_values({"rlp": NO_RESISTOR, "rln": NO_RESISTOR})
+            half = HalfNetwork(network, differential=False)
+            margins.append(measure_margin(half, PROBE))
+        return np.minimum(*margins)
 
     @property
     def settled_error(self) -> Array:
@@ -239,7 +258,9 @@ class Prediction:
         Swing
             By gain and by saturation.
         """
-        return measure_swing(self, margin)
+        if margin not in self._swings:
+            self._swings[margin] = measure_swing(self, margin)
+        return self._swings[margin]
 
     def input_range(self, margin: float = 0.05) -> InputRange:
         """Measure the input common-mode range.

@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gmid.network import (
+    DoubleInjection,
     Noise,
     Structure,
     Transfer,
@@ -262,6 +263,35 @@ def measure_common_mode(
         supply_gain=measure_dc_gain(Transfer(network, "vdd", MEAN)),
         settled_error=settled_error,
     )  # fmt: skip
+
+
+def measure_margin(network: Structure, probe: str) -> Array:
+    """Measure the phase margin of a loop, exactly wherever it is opened.
+
+    Parameters
+    ----------
+    network : Structure
+        With the probe in it.
+    probe : str
+        A voltage source in series with the loop.
+
+    Returns
+    -------
+    ndarray, shape (...)
+        [deg]; not-a-number where the loop gain never falls through 1.
+
+    Examples
+    --------
+    >>> from gmid.network import Network
+    >>> net = Network()
+    >>> net.add_vccs("gm", ("drive", "0"), ("gate", "0"), 1e-3)
+    >>> net.add_resistor("r", "drive", "0", 1e5)
+    >>> net.add_capacitor("c", "gate", "0", 1e-12)
+    >>> net.add_voltage_source("vprobe", "drive", "gate")
+    >>> float(measure_margin(net, "vprobe").round(1))
+    90.6
+    """
+    return measure_loop(DoubleInjection(network, probe), band=_BAND).phase_margin
 
 
 def _find_peak(response: Transfer) -> Array:

@@ -42,6 +42,9 @@ class Parts:
     def __init__(self) -> None:
         self._elements: dict[str, Element] = {}
         self._nodes: dict[str, None] = {}
+        self._names: set[str] = set()
+        self._spelling: dict[str, str] = {}
+        self._batch: tuple[int, ...] | None = None
 
     def add(self, element: Element) -> None:
         """Add an element that exists already, such as one of another circuit.
@@ -65,26 +68,29 @@ class Parts:
         ('a', 'b')
         """
         check_element(element)
-        names = {name.lower() for name in self._elements}
-        if element.name.lower() in names:
+        if element.name.lower() in self._names:
             raise UsageFault(
                 f"the circuit already has an element named {element.name}.",
                 hint="Netlists do not tell capitals from small letters.",
             )
         inner = element.inner_nodes if isinstance(element, Transistor) else ()
-        taken = {node.lower(): node for node in self._nodes}
         for node in inner:
-            if node.lower() in taken:
+            if node.lower() in self._spelling:
                 raise UsageFault(f"{element.name} needs node {node} for itself.")
+        fresh: dict[str, str] = {}
         for node in element.nodes:
-            if taken.setdefault(node.lower(), node) != node:
-                raise UsageFault(f"{node} and {taken[node.lower()]} differ in capitals only.")
+            known = self._spelling.get(node.lower()) or fresh.setdefault(node.lower(), node)
+            if known != node:
+                raise UsageFault(f"{node} and {known} differ in capitals only.")
             if node in inner or self._owner_of(node) is not None:
                 raise UsageFault(f"{element.name}: node {node} lies inside a stack.")
         for node in (*element.nodes, *inner):
             if node != GROUND:
                 self._nodes.setdefault(node)
+                self._spelling[node.lower()] = node
         self._elements[element.name] = element
+        self._names.add(element.name.lower())
+        self._batch = None
 
     def _owner_of(self, node: str) -> str | None:
         name = node.rpartition("_")[0]
@@ -137,6 +143,11 @@ class Parts:
     @property
     def batch(self) -> tuple[int, ...]:
         """Leading axes of the whole circuit: all values broadcast together."""
+        if self._batch is None:
+            self._batch = self._broadcast()
+        return self._batch
+
+    def _broadcast(self) -> tuple[int, ...]:
         batch: tuple[int, ...] = ()
         for element in self._elements.values():
             try:
@@ -201,6 +212,8 @@ class Parts:
         other = type(self)()
         other._elements = dict(self._elements)
         other._nodes = dict(self._nodes)
+        other._names = set(self._names)
+        other._spelling = dict(self._spelling)
         return other
 
     def with_values(self, values: Values) -> Self:

@@ -4,21 +4,10 @@ from __future__ import annotations
 
 import os
 import sys
+from importlib import import_module
 
 import typer
 
-from gmid.cli import (
-    charting,
-    checking,
-    filtering,
-    importing,
-    inspecting,
-    netlisting,
-    querying,
-    showing,
-    simulating,
-    starting,
-)
 from gmid.errors import GmidError, UsageFault
 
 HELP = """Size on-chip filter amplifiers from gm/Id tables.
@@ -27,33 +16,58 @@ Import a process sweep once, ask the table daily, size an amplifier for a filter
 """
 
 
-def build_app() -> typer.Typer:
+_COMMANDS = {
+    "inspect": ("inspecting", "inspect_command"),
+    "import": ("importing", "import_command"),
+    "show": ("showing", "show_command"),
+    "query": ("querying", "query_command"),
+    "chart": ("charting", "chart_command"),
+    "filter": ("filtering", "filter_command"),
+    "check": ("checking", "check_command"),
+    "netlist": ("netlisting", "netlist_command"),
+    "simulate": ("simulating", "simulate_command"),
+}
+"""Module and function of each command, in the order in which they are listed."""
+
+
+def build_app(first: str = "") -> typer.Typer:
     """Assemble the command line.
+
+    Parameters
+    ----------
+    first : str
+        First word of the command line: where it names a command, the others, which take time
+        to describe, are left out.
 
     Returns
     -------
     Typer
-        With every command.
+        With every command, or the one named.
 
     Examples
     --------
     >>> build_app().info.no_args_is_help
     True
+    >>> [command.name for command in build_app("query").registered_commands]
+    ['query']
     """
     app = typer.Typer(
         help=HELP, rich_markup_mode=None, pretty_exceptions_enable=False, no_args_is_help=True
     )
-    app.command("inspect")(inspecting.inspect_command)
-    app.command("import")(importing.import_command)
-    app.command("show")(showing.show_command)
-    app.command("query")(querying.query_command)
-    app.command("chart")(charting.chart_command)
-    app.command("filter")(filtering.filter_command)
-    app.command("check")(checking.check_command)
-    app.command("netlist")(netlisting.netlist_command)
-    app.command("simulate")(simulating.simulate_command)
-    app.add_typer(starting.build_group(), name="new")
+    for name in [first] if first in _COMMANDS else _COMMANDS:
+        module, function = _COMMANDS[name]
+        app.command(name)(getattr(import_module(f"gmid.cli.{module}"), function))
+    if first in _COMMANDS:
+        app.callback()(_keep_group)
+    else:
+        from gmid.cli.starting import build_group
+
+        app.add_typer(build_group(), name="new")
     return app
+
+
+def _keep_group() -> None:
+    """Make a command that stands alone still one of a group."""
 
 
 def main() -> None:
@@ -69,7 +83,7 @@ def main() -> None:
     SystemExit: 1
     """
     try:
-        build_app()(standalone_mode=True)
+        build_app(*sys.argv[1:2])(standalone_mode=True)
     except GmidError as fault:
         print_fault(fault)
         sys.exit(2 if isinstance(fault, UsageFault) else 1)

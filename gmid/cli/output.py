@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import csv
 import json
 import math
 import shutil
@@ -65,6 +64,8 @@ def write_csv(rows: Sequence[Mapping[str, Any]]) -> None:
     vgs,corner
     0.5,tt
     """
+    import csv
+
     if not rows:
         return
     writer = csv.DictWriter(sys.stdout, fieldnames=list(rows[0]), lineterminator="\n")

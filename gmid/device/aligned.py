@@ -7,25 +7,28 @@ body biases suffice.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gmid.condition import Condition
 from gmid.device.channel import Channel, fill_gaps, log_where
-from gmid.device.coordinates import (
-    bulk_coordinate,
-    drain_coordinate,
-    drain_stretch,
-    length_coordinate,
-    refine_drain,
+from gmid.device.coordinates import drain_coordinate, drain_stretch, refine_drain
+from gmid.device.curves import (
+    Curves,
+    cubic_curves,
+    follow_bent,
+    monotone_curves,
+    quintic_curves,
+    slope_operator,
 )
-from gmid.device.curves import Curves, cubic_curves, monotone_curves, quintic_curves
+from gmid.device.grid import Lines
+from gmid.device.reading import Reading, cubic_reading, quintic_reading
 from gmid.device.smoothness import is_noisy, slopes_agree
-from gmid.device.spline import Array, SplineAxis, natural_axis, uniform_axis
+from gmid.device.spline import Array, SplineAxis, uniform_axis
 from gmid.sweep.model import Sweep
 
 THRESHOLD_CURRENT = 100e-9
@@ -38,52 +41,6 @@ _MOST_SPANS = 600
 
 LOGARITHMIC = frozenset({"gds", "noise_thermal"})
 """Quantities whose logarithm is interpolated."""
-
-
-class Grid(Protocol):
-    """What the interpolant needs: transformed values on shifted axes."""
-
-    @property
-    def sweep(self) -> Sweep:
-        """The sweep behind it, for names, unit and axes."""
-
-    @property
-    def condition(self) -> Condition:
-        """The condition it stands for."""
-
-    @property
-    def threshold(self) -> Array:
-        """Shift of the gate axis [V], shape (n_length, n_vsb)."""
-
-    @property
-    def gate(self) -> SplineAxis:
-        """The shifted gate axis [V]."""
-
-    @property
-    def drain(self) -> Array:
-        """Points of the drain axis [V]."""
-
-    @property
-    def notes(self) -> tuple[str, ...]:
-        """What was decided for these data."""
-
-    @property
-    def has_rest(self) -> bool:
-        """Whether any current flows at vds = 0."""
-
-    def table(self, name: str) -> Array:
-        """Give a transformed quantity.
-
-        Parameters
-        ----------
-        name : str
-            A quantity of the sweep, or ``rest``.
-
-        Returns
-        -------
-        ndarray, shape (n_length, n_vsb, n_drain, n_gate)
-            In the variable in which it is smooth.
-        """
 
 
 @dataclass(frozen=True, eq=False)
@@ -115,6 +72,7 @@ class AlignedGrid:
     @cached_property
     def channel(self) -> Channel:
         """The channel's part of the current."""
+        self.sweep.fetch(("id", "gm", "gds"))
         return Channel(self.sweep)
 
     @cached_property
@@ -138,7 +96,7 @@ class AlignedGrid:
         if self.noisy or "gm" not in self.sweep or self.sweep.vgs.size < 4:
             return False
         return slopes_agree(
-            self.sweep.vgs, self.channel.logarithm, self.channel.gate_ratio(), self._conducting
+            self.sweep.vgs, self.channel.logarithm, self.channel.gate_ratio, self._conducting
         )
 
     @property
@@ -154,16 +112,6 @@ class AlignedGrid:
         return tuple(found)
 
     @cached_property
-    def current_curves(self) -> Curves:
-        """The smooth variable of the current along vgs."""
-        q, vgs = self.channel.logarithm, self.sweep.vgs
-        if self.noisy:
-            return monotone_curves(vgs, q)
-        if self.sloped:
-            return quintic_curves(vgs, q, self.channel.gate_ratio())
-        return cubic_curves(vgs, q)
-
-    @cached_property
     def threshold(self) -> Array:
         """Constant-current threshold [V], shape (n_length, n_vsb); zero where there is none."""
         vds = self.sweep.vds
@@ -176,9 +124,15 @@ class AlignedGrid:
             rises = (strength - offset)[..., :-1] < target[..., :-1]
             rises &= (strength - offset)[..., 1:] >= target[..., 1:]
             if rises.any(axis=-1).all():
-                curves = Curves(self.sweep.vgs, self.current_curves.pieces[:, :, middle])
-                return _bisect(curves, rises, target[..., :1])
+                return _bisect(self._current_curves(middle), rises, target[..., 0])
         return np.zeros(strength.shape[:2])
+
+    def _current_curves(self, drain: int) -> Curves:
+        """Lay the smooth variable of the current along vgs, at one vds."""
+        q, vgs = self.channel.logarithm[:, :, drain], self.sweep.vgs
+        if self.sloped:
+            return quintic_curves(vgs, q, self.channel.gate_ratio[:, :, drain])
+        return self._lay(q)
 
     @cached_property
     def gate(self) -> SplineAxis:
@@ -195,6 +149,26 @@ class AlignedGrid:
         return refine_drain(self.sweep.vds)
 
     @cached_property
+    def refinement(self) -> Array:
+        """Matrix from values on the sweep's vds to values on `drain`."""
+        own, fine = drain_coordinate(self.sweep.vds), drain_coordinate(self.drain)
+        return cubic_reading(own, fine).values[0]
+
+    @cached_property
+    def _places(self) -> Array:
+        """Gate voltages [V] at the points of the shifted axis, shape (n_length, n_vsb, m)."""
+        return np.asarray(self.threshold[:, :, None] + self.gate.points)
+
+    @cached_property
+    def _solving(self) -> Reading:
+        """Matrices from values along vgs to coefficients along the shifted gate axis."""
+        reading = cubic_reading(self.sweep.vgs, self._places)
+        return Reading(
+            tuple(self.gate.operator @ part for part in reading.values),
+            tuple(self.gate.operator @ part for part in reading.slopes),
+        )
+
+    @cached_property
     def _between(self) -> tuple[Array, Array] | None:
         """The smooth variable and its slope by vds on the finer drain axis, guided by gds.
 
@@ -203,82 +177,113 @@ class AlignedGrid:
         if self.noisy or "gds" not in self.sweep or self.sweep.vds.size < 4:
             return None
         q, own = self.channel.logarithm, self.sweep.vds
-        points, usable = drain_coordinate(own), np.moveaxis(self._conducting, 2, 3)
-        lines = np.moveaxis(q, 2, 3)
-        slopes = np.moveaxis(self.channel.drain_slope(), 2, 3) / drain_stretch(own)
-        if not slopes_agree(points, lines, slopes, usable, share=0.5):
+        points, usable = drain_coordinate(own), self._conducting
+        slopes = self.channel.drain_slope() / drain_stretch(own)[:, None]
+        lines, tilts = (np.moveaxis(part, 2, 3) for part in (q, slopes))
+        if not slopes_agree(points, lines, tilts, np.moveaxis(usable, 2, 3), share=0.5):
             return None
-        plain = cubic_curves(points, lines).slopes(np.broadcast_to(points, lines.shape))
-        curves = quintic_curves(points, lines, np.where(usable, slopes, plain))
-        places = drain_coordinate(self.drain)
-        places = np.broadcast_to(places, (*lines.shape[:3], places.size))
-        steep = curves.slopes(places) * drain_stretch(self.drain)
-        return np.moveaxis(curves.values(places), 3, 2), np.moveaxis(steep, 3, 2)
+        slopes = np.where(usable, slopes, slope_operator(points) @ q)
+        reading = quintic_reading(points, drain_coordinate(self.drain))
+        value, steep = (
+            on_values @ q + on_slopes @ slopes
+            for on_values, on_slopes in (reading.values, reading.slopes)
+        )
+        return value, steep * drain_stretch(self.drain)[:, None]
 
     @cached_property
-    def _lift(self) -> Curves | None:
-        """What gds tells of the smooth variable between the points, as curves along vgs."""
+    def _lift(self) -> Array | None:
+        """What gds tells of the smooth variable between the points of vds."""
         if self._between is None:
             return None
-        return self._lay(self._between[0] - self._refine(self.channel.logarithm))
+        return np.asarray(self._between[0] - self.refinement @ self.channel.logarithm)
 
-    def table(self, name: str) -> Array:
-        """Give a quantity in the variable in which it is smooth, on the shifted axes.
+    @cached_property
+    def _current(self) -> tuple[Array, Array]:
+        """Coefficients of the smooth variable and of its slope by vgs, guided by gm."""
+        vgs, q, steep = self.sweep.vgs, self.channel.logarithm, self.channel.gate_ratio
+        reading = quintic_reading(vgs, self._places)
+        found = [
+            _apply(on_values, q) + _apply(on_slopes, steep)
+            for on_values, on_slopes in (reading.values, reading.slopes)
+        ]
+        beyond = self._places[:, :, None] - vgs[-1]
+        first = int(np.argmax(np.append((beyond > 0).any(axis=(0, 1, 2)), True)))
+        beyond = beyond[..., first:]
+        end = (q[..., -1:], steep[..., -1:], steep @ slope_operator(vgs)[-1:].T)
+        for part, bent in zip(found, follow_bent(*end, beyond), strict=True):
+            part[..., first:] = np.where(beyond > 0, bent, part[..., first:])
+        return found[0] @ self.gate.operator.T, found[1] @ self.gate.operator.T
+
+    def lines(self, names: Sequence[str]) -> list[Lines]:
+        """Give quantities in the variables in which they are smooth, along the shifted gate axis.
 
         Parameters
         ----------
-        name : str
-            A quantity of the sweep, or ``rest`` for the current at vds = 0.
+        names : sequence of str
+            Quantities of the sweep, and ``rest`` for the current at vds = 0.
 
         Returns
         -------
-        ndarray, shape (n_length, n_vsb, n_drain, n_gate)
+        list of Lines
             ``rest`` has one drain point.
 
         Examples
         --------
         >>> from gmid.device.example import example_sweep
-        >>> AlignedGrid(example_sweep()).table("gm").shape[:3]
-        (3, 3, 25)
+        >>> AlignedGrid(example_sweep()).lines(["gmb"])[0].coarse.shape[:3]
+        (3, 3, 13)
         """
-        shifted = self.threshold[:, :, None, None] + self.gate.points
-        places = np.broadcast_to(shifted, (*self.sweep.shape[:3], shifted.shape[-1]))
+        self.sweep.fetch([name for name in names if name != "rest"])
+        return [self._line_up(name) for name in names]
+
+    def _line_up(self, name: str) -> Lines:
         if name == "rest":
-            return self._lay(self.channel.rest[:, :, None]).values(shifted)
-        if name == "id":
-            found = self._refine(self.current_curves.values(places))
-            return found if self._lift is None else found + self._lift.values(shifted)
-        if name == "gm" and self.sloped:
-            found = self._refine(self.current_curves.slopes(places))
-            return found if self._lift is None else found + self._lift.slopes(shifted)
+            return Lines(self._read(self.channel.rest[:, :, None]))
+        if name == "id" or (name == "gm" and self.sloped):
+            return self._guided(name)
         values = self._transform(name)
+        if name not in LOGARITHMIC:
+            return Lines(self._read(values))
+        if self.noisy:
+            return Lines(fine=self._read(self.refinement @ values))
+        beside = self._beside_current if self.sloped else None
         if name == "gds" and self._between is not None:
-            values = self._conductance(values)
-        elif name in LOGARITHMIC or self.sloped:
-            values = self._refine(values)
-        if name in LOGARITHMIC and self.sloped:
-            q = self._refine(self.channel.logarithm) if self._between is None else self._between[0]
-            return self._lay(values - q).values(shifted) + self.table("id")
-        if values.shape[2] == self.drain.size:
-            return self._lay(values).values(shifted)
-        return self._refine(self._lay(values).values(places))
+            return Lines(beside, self._read(self._conductance(values)))
+        own = self._read(values)
+        return Lines(own if beside is None else own + beside)
+
+    def _guided(self, name: str) -> Lines:
+        """Give the current, or gm where it is the current's slope."""
+        fine = None
+        if self._lift is not None:
+            solving = self._solving.values if name == "id" else self._solving.slopes
+            fine = _apply(solving[0], self._lift)
+        if self.sloped:
+            return Lines(self._current[0 if name == "id" else 1], fine)
+        return Lines(self._read(self.channel.logarithm), fine)
+
+    @cached_property
+    def _beside_current(self) -> Array:
+        """What gm tells of the current between the points of vgs: logarithms follow it."""
+        return np.asarray(self._current[0] - self._read(self.channel.logarithm))
 
     def _conductance(self, values: Array) -> Array:
         """Refine ln gds by the slope of the current's curves, where that is positive."""
         assert self._between is not None
-        q, steep = self._between
-        thermal_voltage = self.sweep.condition.thermal_voltage
-        fall = np.exp(-self.drain / thermal_voltage)[:, None]
-        slope = steep * -np.expm1(-self.drain / thermal_voltage)[:, None] + fall / thermal_voltage
-        found = self._refine(values)
-        between = np.zeros(found.shape, dtype=bool)
-        between[:, :, 1::2] = True
-        between &= slope > 0
-        return np.where(between, q + np.log(np.where(between, slope, 1.0)), found)
+        assert self._lift is not None
+        q, steep = (part[:, :, 1::2] for part in self._between)
+        thermal_voltage, drain = self.condition.thermal_voltage, self.drain[1::2, None]
+        fall = np.exp(-drain / thermal_voltage)
+        slope = steep * -np.expm1(-drain / thermal_voltage) + fall / thermal_voltage
+        found = np.asarray(self.refinement @ values)
+        good = slope > 0
+        known = q + np.log(np.where(good, slope, 1.0))
+        found[:, :, 1::2] = np.where(good, known, found[:, :, 1::2])
+        return found
 
     def _transform(self, name: str) -> Array:
         if name == "gm":
-            return self.channel.gate_ratio()
+            return self.channel.gate_ratio
         if name == "gmb":
             return self.channel.bulk_ratio()
         if name == "noise_flicker":
@@ -289,12 +294,16 @@ class AlignedGrid:
     def _lay(self, values: Array) -> Curves:
         return (monotone_curves if self.noisy else cubic_curves)(self.sweep.vgs, values)
 
-    def _refine(self, values: Array) -> Array:
-        """Read values over the third axis, on the sweep's vds, on the finer drain axis."""
-        own, fine = drain_coordinate(self.sweep.vds), drain_coordinate(self.drain)
-        curves = cubic_curves(own, np.moveaxis(values, 2, 3))
-        places = np.broadcast_to(fine, (*curves.pieces.shape[:3], fine.size))
-        return np.ascontiguousarray(np.moveaxis(curves.values(places), 3, 2))
+    def _read(self, values: Array) -> Array:
+        """Read values over (length, vsb, vds, vgs) along the gate axis, as coefficients."""
+        if not self.noisy:
+            return _apply(self._solving.values[0], values)
+        return self._lay(values).values(self._places[:, :, None]) @ self.gate.operator.T
+
+
+def _apply(matrices: Array, lines: Array) -> Array:
+    """Apply the matrix of each length and vsb to all lines over vgs there."""
+    return np.asarray(lines @ np.swapaxes(matrices, -1, -2))
 
 
 def gate_reach(grid: AlignedGrid) -> tuple[float, float]:
@@ -326,37 +335,14 @@ def gate_reach(grid: AlignedGrid) -> tuple[float, float]:
 def _bisect(curves: Curves, rises: NDArray[np.bool_], target: Array) -> Array:
     """Find where curves last cross a target upwards, between the points marked for each."""
     last = rises.shape[-1] - 1 - np.argmax(rises[..., ::-1], axis=-1)
-    low, high = curves.points[last], curves.points[last + 1]
+    powers = np.moveaxis(np.take_along_axis(curves.pieces, last[..., None, None], axis=-2), -1, 0)
+    low, high = np.zeros(last.shape), np.ones(last.shape)
     for _ in range(50):
         middle = 0.5 * (low + high)
-        below = curves.values(middle[..., None])[..., 0] < target[..., 0]
+        value = powers[-1, ..., 0]
+        for coefficient in powers[-2::-1, ..., 0]:
+            value = value * middle + coefficient
+        below = value < target
         low, high = np.where(below, middle, low), np.where(below, high, middle)
-    return np.asarray(0.5 * (low + high))
-
-
-def spline_axes(grid: Grid) -> tuple[SplineAxis, SplineAxis, SplineAxis, SplineAxis]:
-    """Make the four axes of a grid's tensor-product spline.
-
-    Parameters
-    ----------
-    grid : Grid
-        The grid.
-
-    Returns
-    -------
-    length, vsb, vds, gate : SplineAxis
-        In the coordinates of this module.
-
-    Examples
-    --------
-    >>> from gmid.device.example import example_sweep
-    >>> [axis.order for axis in spline_axes(AlignedGrid(example_sweep()))]
-    [3, 3, 4, 4]
-    """
-    sweep = grid.sweep
-    return (
-        natural_axis(length_coordinate(sweep.length)),
-        natural_axis(bulk_coordinate(sweep.vsb, float(sweep.vsb[0]))),
-        natural_axis(drain_coordinate(grid.drain)),
-        grid.gate,
-    )
+    width = np.diff(curves.points)[last]
+    return np.asarray(curves.points[last] + 0.5 * (low + high) * width)

@@ -10,6 +10,7 @@ import numpy as np
 
 from gmid.condition import Condition
 from gmid.device.aligned import AlignedGrid, gate_reach
+from gmid.device.grid import Lines
 from gmid.device.spline import Array, SplineAxis
 from gmid.errors import DataFault, OutOfReach
 from gmid.nomenclature import AXES
@@ -139,17 +140,22 @@ class BlendedGrid:
         listed = ", ".join(temperatures[:-1]) + " and " + temperatures[-1]
         return (f"interpolated between {listed} C", *told)
 
-    def table(self, name: str) -> Array:
-        """Give a transformed quantity, shape (n_length, n_vsb, n_drain, n_gate).
+    @property
+    def refinement(self) -> Array:
+        """Matrix from values on the sweep's vds to values on `drain`."""
+        return self.parts[0].refinement
+
+    def lines(self, names: Sequence[str]) -> list[Lines]:
+        """Give transformed quantities along the shifted gate axis.
 
         Parameters
         ----------
-        name : str
-            As for `AlignedGrid.table`.
+        names : sequence of str
+            As for `AlignedGrid.lines`.
 
         Returns
         -------
-        ndarray
+        list of Lines
             The blend of the parts.
 
         Examples
@@ -157,10 +163,22 @@ class BlendedGrid:
         >>> from gmid.device.example import example_sweep
         >>> cold = example_sweep()
         >>> hot = replace(cold, condition=Condition("tt", 28.0))
-        >>> BlendedGrid.of([cold, hot], 27.5).table("id").shape[:3]
-        (3, 3, 25)
+        >>> BlendedGrid.of([cold, hot], 27.5).lines(["gmb"])[0].coarse.shape[:3]
+        (3, 3, 13)
         """
-        return np.asarray(np.tensordot(self._weights, [p.table(name) for p in self.parts], 1))
+        return [
+            Lines(
+                _blend(self._weights, [part.coarse for part in parts]),
+                _blend(self._weights, [part.fine for part in parts]),
+            )
+            for parts in zip(*(part.lines(names) for part in self.parts), strict=True)
+        ]
+
+
+def _blend(weights: Array, parts: Sequence[Array | None]) -> Array | None:
+    """Weigh and add what is there."""
+    there = [w * part for w, part in zip(weights, parts, strict=True) if part is not None]
+    return np.sum(there, axis=0) if there else None
 
 
 def _check_family(ordered: Sequence[Sweep]) -> None:

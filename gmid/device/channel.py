@@ -100,20 +100,9 @@ class Channel:
         factor = np.where(self.saturation > 0, self.saturation, 1.0)
         return np.asarray(np.exp(self.logarithm) * factor)
 
+    @cached_property
     def gate_ratio(self) -> Array:
-        """Divide gm by the channel's current; the limit dq/dvgs stands at vds = 0.
-
-        Returns
-        -------
-        ndarray, shape of the grid
-            Ratio [1/V].
-
-        Examples
-        --------
-        >>> from gmid.device.example import example_sweep
-        >>> Channel(example_sweep()).gate_ratio().max().round(2)
-        np.float64(29.74)
-        """
+        """Ratio of gm to the channel's current [1/V]; the limit dq/dvgs stands at vds = 0."""
         gm = self.sweep["gm"]
         if self.begins_at_zero:
             gm = gm - gm[:, :, :1]

@@ -11,8 +11,9 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from numpy.lib.stride_tricks import as_strided
+from numpy.lib.stride_tricks import as_strided, sliding_window_view
 
+from gmid.device.cells import group_points, multiply_weights, place_points
 from gmid.device.coordinates import drain_coordinate, drain_stretch
 from gmid.device.spline import Array, Indices, SplineAxis
 
@@ -69,7 +70,7 @@ class Collapsed:
     ----------
     vsb, vds, gate : SplineAxis
         Axes; vsb and vds in their coordinates, the gate shifted by the threshold.
-    coefficients : ndarray, shape (lengths, vsb spans, vsb order, n_vds, n_gate, quantities)
+    coefficients : ndarray, shape (lengths, vsb spans, n_vds, n_gate, vsb order, quantities)
         As `expand_spans` gives them.
     threshold : ndarray, shape (lengths, vsb spans, vsb order)
         Coefficients of the threshold [V].
@@ -80,7 +81,7 @@ class Collapsed:
     --------
     >>> from gmid.device.spline import natural_axis, uniform_axis
     >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
-    >>> spline = Collapsed(one, one, gate, (gate.operator @ gate.points).reshape(1, 1, 1, 1, 7, 1),
+    >>> spline = Collapsed(one, one, gate, (gate.operator @ gate.points).reshape(1, 1, 1, 7, 1, 1),
     ...                    np.zeros((1, 1, 1)), 0.8)
     >>> place = spline.locate(np.zeros(1, int), np.array([0.3]), np.zeros(1), np.zeros(1))
     >>> spline.values(place).round(12)
@@ -102,8 +103,8 @@ class Collapsed:
     @cached_property
     def _runs(self) -> Array:
         """Overlapping rows: all that one point needs at one vds, side by side."""
-        lengths, spans, order, drains, gates, count = self.coefficients.shape
-        flat = np.ascontiguousarray(self.coefficients.transpose(0, 1, 3, 4, 2, 5)).reshape(-1)
+        lengths, spans, drains, gates, order, count = self.coefficients.shape
+        flat = self.coefficients.reshape(-1)
         step = order * count
         rows = lengths * spans * drains * gates - self.gate.order + 1
         return as_strided(flat, (rows, self.gate.order * step), (step * 8, 8), writeable=False)
@@ -111,8 +112,7 @@ class Collapsed:
     @cached_property
     def _leading(self) -> Array:
         """Coefficients of the first quantity: for each place of the vsb order one block."""
-        moved = self.coefficients[..., 0].transpose(2, 0, 1, 3, 4)
-        return np.ascontiguousarray(moved).reshape(-1)
+        return np.ascontiguousarray(np.moveaxis(self.coefficients[..., 0], -1, 0)).reshape(-1)
 
     @cached_property
     def _offsets(self) -> Indices:
@@ -145,7 +145,7 @@ class Collapsed:
         --------
         >>> from gmid.device.spline import natural_axis, uniform_axis
         >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
-        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 1, 7, 1)), np.ones((1, 1, 1)), 0.8)
+        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 7, 1, 1)), np.ones((1, 1, 1)), 0.8)
         >>> spline.locate(np.zeros(1, int), np.ones(1), np.zeros(1), np.zeros(1)).first
         array([0])
         """
@@ -187,7 +187,7 @@ class Collapsed:
         --------
         >>> from gmid.device.spline import natural_axis, uniform_axis
         >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
-        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 1, 7, 2)), np.ones((1, 1, 1)), 0.8)
+        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 7, 1, 2)), np.ones((1, 1, 1)), 0.8)
         >>> place = spline.locate(np.zeros(1, int), np.ones(1), np.zeros(1), np.zeros(1))
         >>> spline.values(place).round(9)
         array([[1., 1.]])
@@ -201,6 +201,42 @@ class Collapsed:
                 place.gate[part, None, :], by_gate.reshape(len(runs), self.gate.order, -1)
             ).reshape(len(runs), self.vsb.order, count)
             found[part] = np.einsum("nsq,ns->nq", by_bulk, place.vsb[part])
+        return found
+
+    def curves(self, which: Indices, vsb: Array, vds: Array) -> Array:
+        """Collapse to coefficients along the gate axis alone.
+
+        Parameters
+        ----------
+        which : ndarray of int, shape (n,)
+            Which of the lengths.
+        vsb, vds : ndarray, shape (n,)
+            Voltages [V], inside the table.
+
+        Returns
+        -------
+        ndarray, shape (n, n_gate, quantities)
+            Coefficients of one curve for each point and quantity.
+
+        Examples
+        --------
+        >>> from gmid.device.spline import natural_axis, uniform_axis
+        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
+        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 7, 1, 2)), np.ones((1, 1, 1)), 0.8)
+        >>> spline.curves(np.zeros(2, int), np.zeros(2), np.zeros(2)).shape
+        (2, 7, 2)
+        """
+        axes = (self.vsb, self.vds)
+        points = (np.sqrt(self.offset + vsb), drain_coordinate(vds))
+        (bulk, drain), weights = place_points(axes, points)
+        _, _, _, gates, _, count = self.coefficients.shape
+        found = np.empty((which.size, gates, count))
+        shape = (self.lengths, self.vsb.spans, self.vds.spans)
+        for members, (length, low, left) in group_points(shape, [which, bulk, drain]):
+            block = self.coefficients[length, low, left : left + self.vds.order]
+            outer = multiply_weights([weights[0][members], weights[1][members]])
+            rows = block.transpose(2, 0, 1, 3).reshape(outer.shape[1], -1)
+            found[members] = (outer @ rows).reshape(-1, gates, count)
         return found
 
     def gradient(self, place: Place) -> tuple[Array, Array, Array, Array]:
@@ -221,7 +257,7 @@ class Collapsed:
         >>> from gmid.device.spline import natural_axis, uniform_axis
         >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
         >>> spline = Collapsed(one, one, gate, (gate.operator @ gate.points)
-        ...                    .reshape(1, 1, 1, 1, 7, 1), np.zeros((1, 1, 1)), 0.8)
+        ...                    .reshape(1, 1, 1, 7, 1, 1), np.zeros((1, 1, 1)), 0.8)
         >>> place = spline.locate(np.zeros(1, int), np.array([0.3]), np.zeros(1), np.zeros(1))
         >>> float(spline.gradient(place)[1][0].round(9))
         1.0
@@ -261,27 +297,26 @@ class Collapsed:
         return np.asarray(self._runs[rows])
 
 
-def expand_spans(coefficients: Array, axis: SplineAxis) -> Array:
-    """Copy the coefficients of each span of the second axis side by side.
+def expand_spans(solved: Array, vsb: SplineAxis) -> Array:
+    """Lay coefficients out as `Collapsed` reads them.
 
     Parameters
     ----------
-    coefficients : ndarray, shape (k, n, ...)
-        With the n coefficients of `axis` second.
-    axis : SplineAxis
-        The axis.
+    solved : ndarray, shape (quantities, lengths, n_vsb, n_vds, n_gate)
+        Coefficients.
+    vsb : SplineAxis
+        The axis of body bias.
 
     Returns
     -------
-    ndarray, shape (k, spans, order, ...)
-        For each span, the coefficients that bear on it.
+    ndarray, shape (lengths, vsb spans, n_vds, n_gate, vsb order, quantities)
+        For each span of vsb those that bear on it, all quantities side by side.
 
     Examples
     --------
     >>> from gmid.device.spline import natural_axis
-    >>> expand_spans(np.arange(5.0)[None], natural_axis(np.arange(5.0)))
-    array([[[0., 1., 2., 3.],
-            [1., 2., 3., 4.]]])
+    >>> expand_spans(np.arange(5.0).reshape(1, 1, 5, 1, 1), natural_axis(np.arange(5.0))).ravel()
+    array([0., 1., 2., 3., 1., 2., 3., 4.])
     """
-    columns = np.arange(axis.spans)[:, None] + np.arange(axis.order)
-    return np.ascontiguousarray(coefficients[:, columns])
+    spans = sliding_window_view(solved, vsb.order, axis=2)
+    return np.ascontiguousarray(spans.transpose(1, 2, 3, 4, 5, 0))

@@ -26,9 +26,10 @@ class Curves:
         Ends of the pieces.
     pieces : ndarray, shape (..., n - 1, order)
         Coefficients by powers of the place within the piece, 0 to 1.
-    bend : bool
-        Whether the slope goes on falling as 1/x beyond the upper end, as gm/Id does; beyond
-        the lower end, and otherwise, the curve is straight.
+
+    Notes
+    -----
+    Beyond its ends a curve is straight.
 
     Examples
     --------
@@ -40,7 +41,6 @@ class Curves:
 
     points: Array
     pieces: Array
-    bend: bool = False
 
     def values(self, x: Array) -> Array:
         """Evaluate each curve at its own places.
@@ -70,11 +70,8 @@ class Curves:
         if not beyond.any():
             return value
         sides = np.reshape([0, self.points.size - 2], (1,) * (cell.ndim - 1) + (2,))
-        _, slope, curve = self._expand(sides, np.array([0.0, 1.0]), np.diff(self.points)[sides])
-        slope, curve = (np.where(beyond > 0, e[..., 1:], e[..., :1]) for e in (slope, curve))
-        if not self.bend:
-            return np.asarray(value + beyond * slope)
-        return _continue(value, slope, curve, beyond)[0]
+        ends = self._tilt(sides, np.array([0.0, 1.0]), np.diff(self.points)[sides])
+        return np.asarray(value + beyond * np.where(beyond > 0, ends[..., 1:], ends[..., :1]))
 
     def slopes(self, x: Array) -> Array:
         """Give the slope of each curve at its own places.
@@ -96,9 +93,8 @@ class Curves:
         """
         if self.points.size == 1:
             return np.zeros(self._flat(x).shape)
-        beyond, cell, place, width = self._locate(x)
-        value, slope, curve = self._expand(cell, place, width)
-        return _continue(value, slope, curve, beyond)[1] if self.bend else slope
+        _, cell, place, width = self._locate(x)
+        return self._tilt(cell, place, width)
 
     def _flat(self, x: Array) -> Array:
         shape = np.broadcast_shapes((*self.pieces.shape[:-2], 1), x.shape)
@@ -119,23 +115,42 @@ class Curves:
         picked = np.take(self.pieces.reshape(-1, order), first + cell, axis=0)
         return np.moveaxis(picked, -1, 0)
 
-    def _expand(self, cell: Indices, place: Array, width: Array) -> tuple[Array, Array, Array]:
-        """Give values and two derivatives inside cells."""
-        value = slope = curve = np.zeros(1)
+    def _tilt(self, cell: Indices, place: Array, width: Array) -> Array:
+        """Give slopes inside cells."""
+        value = slope = np.zeros(1)
         for coefficient in reversed(self._gather(cell)):
-            curve = curve * place + 2.0 * slope
             slope = slope * place + value
             value = value * place + coefficient
-        return value, slope / width, curve / width**2
+        return np.asarray(slope / width)
 
 
-def _continue(value: Array, slope: Array, curve: Array, beyond: Array) -> tuple[Array, Array]:
-    """Continue curves so that above the end the slope falls as slope/(1 + fall*beyond)."""
+def follow_bent(value: Array, slope: Array, curve: Array, beyond: Array) -> tuple[Array, Array]:
+    """Continue curves beyond their ends so that above, the slope falls as gm/Id does.
+
+    Parameters
+    ----------
+    value, slope, curve : ndarray
+        Value and two derivatives at the end; they broadcast.
+    beyond : ndarray
+        Way beyond the end, positive above the upper and negative below the lower one.
+
+    Returns
+    -------
+    value, slope : ndarray
+        ``slope / (1 - beyond * curve / slope)`` above, straight below; the value belongs to it.
+
+    Examples
+    --------
+    >>> one = np.ones(1)
+    >>> follow_bent(0 * one, one, -one, one)
+    (array([0.69314718]), array([0.5]))
+    """
     fall = np.divide(-curve, slope, out=np.zeros(slope.shape), where=slope > 0)
     reach = np.where((beyond > 0) & (fall > 1e-6), beyond * fall, 0.0)
     bent = reach > 0
     gain = np.divide(np.log1p(reach), reach, out=np.ones(reach.shape), where=bent)
-    return value + beyond * slope * gain, slope / (1.0 + reach)
+    found = np.asarray(value + beyond * slope * gain)
+    return found, np.asarray(slope / (1.0 + reach))
 
 
 def cubic_curves(points: Array, values: Array) -> Curves:
@@ -225,7 +240,8 @@ def quintic_curves(points: Array, values: Array, slopes: Array) -> Curves:
     The condition at inner points is that of two quintic Hermite pieces meeting with equal
     third derivatives; Spaeth, One Dimensional Spline Interpolation (1995), from memory.
     """
-    bends = _second_derivatives(points, values, slopes)
+    by_values, by_slopes = bend_operators(points)
+    bends = values @ by_values.T + slopes @ by_slopes.T
     width = np.diff(points)
     rise = np.diff(values, axis=-1)
     d0, d1 = slopes[..., :-1] * width, slopes[..., 1:] * width
@@ -241,25 +257,55 @@ def quintic_curves(points: Array, values: Array, slopes: Array) -> Curves:
         ),
         axis=-1,
     )
-    return Curves(points, pieces, bend=True)
+    return Curves(points, pieces)
 
 
-def _second_derivatives(points: Array, values: Array, slopes: Array) -> Array:
-    """Solve for second derivatives; at both ends they are those of a spline of the slopes."""
-    width = np.diff(points)
-    count = points.size
+def bend_operators(points: Array) -> tuple[Array, Array]:
+    """Make the matrices that give the second derivatives of `quintic_curves` at their points.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n,)
+        Strictly rising, at least four.
+
+    Returns
+    -------
+    by_values, by_slopes : ndarray, shape (n, n)
+        Second derivatives = the one times values plus the other times slopes; at both ends
+        they are those of a spline of the slopes.
+
+    Examples
+    --------
+    >>> by_values, by_slopes = bend_operators(np.arange(4.0))
+    >>> (by_values @ np.arange(4.0) ** 2 + by_slopes @ (2 * np.arange(4.0))).round(9)
+    array([2., 2., 2., 2.])
+    """
+    return _make_bends(np.asarray(points, dtype=np.float64).tobytes())
+
+
+@lru_cache(maxsize=32)
+def _make_bends(raw: bytes) -> tuple[Array, Array]:
+    """Solve for the second derivatives of some points once, for every quantity."""
+    points = np.frombuffer(raw)
+    width, count = np.diff(points), points.size
     matrix = np.zeros((count, count))
     matrix[0, 0] = matrix[-1, -1] = 1.0
     inner = np.arange(1, count - 1)
     matrix[inner, inner - 1] = -3 / width[:-1]
     matrix[inner, inner] = 9 * (1 / width[:-1] + 1 / width[1:])
     matrix[inner, inner + 1] = -3 / width[1:]
-    right = apply_along(slope_operator(points), slopes, -1)
-    rise = np.diff(values, axis=-1) / width**3
-    before = (24 * slopes[..., :-2] + 36 * slopes[..., 1:-1]) / width[:-1] ** 2
-    after = (36 * slopes[..., 1:-1] + 24 * slopes[..., 2:]) / width[1:] ** 2
-    right[..., 1:-1] = 60 * (rise[..., 1:] - rise[..., :-1]) + before - after
-    return apply_along(np.asarray(np.linalg.inv(matrix), dtype=np.float64), right, -1)
+    by_values, by_slopes = np.zeros((count, count)), np.array(slope_operator(points))
+    by_values[inner, inner - 1] = 60 / width[:-1] ** 3
+    by_values[inner, inner] = -60 / width[:-1] ** 3 - 60 / width[1:] ** 3
+    by_values[inner, inner + 1] = 60 / width[1:] ** 3
+    by_slopes[1:-1] = 0.0
+    by_slopes[inner, inner - 1] = 24 / width[:-1] ** 2
+    by_slopes[inner, inner] = 36 / width[:-1] ** 2 - 36 / width[1:] ** 2
+    by_slopes[inner, inner + 1] = -24 / width[1:] ** 2
+    right = np.hstack((by_values, by_slopes))
+    solved = np.asarray(np.linalg.solve(matrix, right), dtype=np.float64)
+    solved.flags.writeable = False
+    return solved[:, :count], solved[:, count:]
 
 
 def monotone_curves(points: Array, values: Array) -> Curves:

@@ -10,8 +10,9 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from gmid.condition import Condition
-from gmid.device.aligned import AlignedGrid, Grid
+from gmid.device.aligned import AlignedGrid
 from gmid.device.blend import BlendedGrid
+from gmid.device.grid import Grid
 from gmid.device.interpolant import Interpolant
 from gmid.device.inverse import solve_diode, solve_drive
 from gmid.device.model import DeviceModel

@@ -12,9 +12,9 @@ from functools import cached_property
 
 import numpy as np
 
-from gmid.device.aligned import LOGARITHMIC, Grid, spline_axes
+from gmid.device.aligned import LOGARITHMIC
 from gmid.device.channel import saturate
-from gmid.device.collapsed import Collapsed
+from gmid.device.collapsed import Collapsed, expand_spans
 from gmid.device.coordinates import (
     bulk_coordinate,
     bulk_offset,
@@ -22,8 +22,9 @@ from gmid.device.coordinates import (
     length_coordinate,
     roll_off_coordinate,
 )
-from gmid.device.spline import Array, SplineAxis, natural_axis
-from gmid.device.stack import Stack, solve_table
+from gmid.device.grid import Grid, Lines, spline_axes
+from gmid.device.spline import Array, Indices, SplineAxis, natural_axis
+from gmid.device.stack import Stack
 
 _KEPT = 64
 """Collapsed splines kept for later queries."""
@@ -57,7 +58,7 @@ class Interpolant:
     """
 
     grid: Grid
-    _coefficients: dict[str, Array] = field(default_factory=dict, repr=False)
+    _lines: dict[str, Lines] = field(default_factory=dict, repr=False)
     _stacks: dict[tuple[str, ...], Stack] = field(default_factory=dict, repr=False)
     _kept: dict[tuple[tuple[str, ...], bytes], Collapsed] = field(default_factory=dict, repr=False)
 
@@ -157,21 +158,12 @@ class Interpolant:
         """
         key = tuple(names)
         if key not in self._stacks:
-            length, vsb, vds, gate = self.axes
-            alone = natural_axis(np.zeros(1))
-            for name in key:
-                if name not in self._coefficients:
-                    across = alone if name == "rest" else vds
-                    table = self.grid.table(name)
-                    self._coefficients[name] = solve_table((length, vsb, across, gate), table)
-            if key == ("rest",):
-                vds = alone
-            shape = (length.size, vds.size, gate.size, vsb.size)
             if len(self._stacks) >= _KEPT:
                 self._stacks.pop(next(iter(self._stacks)))
-            parts = [np.broadcast_to(self._coefficients[name], shape) for name in key]
-            together = np.stack(parts, axis=-1)
-            self._stacks[key] = Stack(length, vsb, vds, gate, together)
+            solved = self._solve(key, self.axes[0].operator)
+            together = np.ascontiguousarray(solved.transpose(1, 3, 4, 2, 0))
+            length, vsb, _, gate = self.axes
+            self._stacks[key] = Stack(length, vsb, self._across(key), gate, together)
         return self._stacks[key]
 
     def collapse(self, names: Sequence[str], length: Array) -> Collapsed:
@@ -200,10 +192,91 @@ class Interpolant:
         if key not in self._kept:
             if len(self._kept) >= _KEPT:
                 self._kept.pop(next(iter(self._kept)))
-            self._kept[key] = self.stack(names).collapse(
-                length_coordinate(length), self.threshold_lines(length), self.offset
+            axis = self.axes[0]
+            span, place = axis.locate(length_coordinate(length))
+            columns = span[:, None] + np.arange(axis.order)
+            settling = np.einsum("kl,kln->kn", axis.weights(span, place), axis.operator[columns])
+            self._kept[key] = Collapsed(
+                self.axes[1],
+                self._across(key[0]),
+                self.axes[3],
+                expand_spans(self._solve(key[0], settling), self.axes[1]),
+                self.threshold_lines(length)[:, self._columns],
+                self.offset,
             )
         return self._kept[key]
+
+    def _across(self, names: tuple[str, ...]) -> SplineAxis:
+        """Take the drain axis, which the current at vds = 0 alone has not."""
+        return self._alone if names == ("rest",) else self.axes[2]
+
+    @cached_property
+    def _alone(self) -> SplineAxis:
+        return natural_axis(np.zeros(1))
+
+    @cached_property
+    def _columns(self) -> Indices:
+        """Coefficients along vsb that bear on each span."""
+        vsb = self.axes[1]
+        return np.arange(vsb.spans)[:, None] + np.arange(vsb.order)
+
+    @cached_property
+    def _refining(self) -> Array:
+        """Matrix from values on the sweep's vds to coefficients along the drain."""
+        return np.asarray(self.axes[2].operator @ self.grid.refinement)
+
+    def _solve(self, names: tuple[str, ...], settling: Array) -> Array:
+        """Solve for coefficients, the lengths first settled by rows of weights.
+
+        The result has shape (names, rows, n_vsb, n_drain, n_gate).
+        """
+        _, vsb, vds, gate = self.axes
+        rows, drains = len(settling), self._across(names).size
+        found = np.zeros((len(names), rows, vsb.size, drains, gate.size))
+        missing = [name for name in names if name not in self._lines]
+        self._lines.update(zip(missing, self.grid.lines(missing), strict=True))
+        for column, name in zip(found, names, strict=True):
+            lines = self._lines[name]
+            for part, operator in ((lines.coarse, self._refining), (lines.fine, vds.operator)):
+                if part is None:
+                    continue
+                settled = (settling @ part.reshape(len(part), -1)).reshape(rows, vsb.size, -1)
+                settled = (vsb.operator @ settled).reshape(rows, *part.shape[1:])
+                column += settled if name == "rest" else operator @ settled
+        return found
+
+    def settle(self, names: Sequence[str], length: Array) -> tuple[Collapsed, Indices] | None:
+        """Give the splines at the lengths of some points, if those are few.
+
+        Parameters
+        ----------
+        names : sequence of str
+            As for `collapse`.
+        length : ndarray, shape (n,)
+            Channel lengths [m].
+
+        Returns
+        -------
+        spline : Collapsed
+            At each length that occurs.
+        which : ndarray of int, shape (n,)
+            Which of them belongs to each point.  None in place of both where the lengths are
+            too many for so few points.
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> spline = Interpolant(AlignedGrid(example_sweep()))
+        >>> spline.settle(["id"], np.array([1e-6, 2e-6, 1e-6]))[1]
+        array([0, 1, 0])
+        """
+        if not np.any(length != length[:1]):
+            return self.collapse(names, length[:1]), np.zeros(length.size, dtype=np.intp)
+        lengths, which = np.unique(length, return_inverse=True)
+        if lengths.size > max(_FEW_LENGTHS, length.size // _POINTS_PER_LENGTH):
+            return None
+        return self.collapse(names, lengths), which
 
     def tables(
         self, names: Sequence[str], length: Array, vgs: Array, vds: Array, vsb: Array
@@ -231,9 +304,9 @@ class Interpolant:
         >>> spline.tables(["gds"], one * 1e-6, one * 0.6, one, one * 0).shape
         (1, 1)
         """
-        lengths, which = np.unique(length, return_inverse=True)
-        if lengths.size <= max(_FEW_LENGTHS, length.size // _POINTS_PER_LENGTH):
-            spline = self.collapse(names, lengths)
+        settled = self.settle(names, length)
+        if settled is not None:
+            spline, which = settled
             return spline.values(spline.locate(which, vgs, vds, vsb))
         gate = vgs - self.threshold(length, vsb)
         bulk = bulk_coordinate(vsb, float(self.grid.sweep.vsb[0]))

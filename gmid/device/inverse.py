@@ -61,13 +61,19 @@ def solve_drive(
     """
     drive = Drive(name, interpolant)
     found = np.empty(target.size)
+    settled = interpolant.settle(drive.columns, length)
     low, high = np.empty(target.size), np.empty(target.size)
     scaled = drive.scale(target)
     order = _sort_by_cell(interpolant, length, vds)
     for start in range(0, target.size, _CHUNK):
         part = order[start : start + _CHUNK]
+        if settled is not None:
+            lines = settled[0].curves(settled[1][part], vsb[part], vds[part])
+        else:
+            lines = _collapse_all(drive, length[part], vds[part], vsb[part])
+        shift = interpolant.threshold(length[part], vsb[part])
         found[part], low[part], high[part] = _solve_chunk(
-            drive, scaled[part], length[part], vds[part], vsb[part]
+            drive, scaled[part], lines, shift, vds[part]
         )
     reach = (drive.unscale(low), drive.unscale(high))
     points = {"length": length, "vds": vds, "vsb": vsb}
@@ -82,15 +88,20 @@ def _sort_by_cell(interpolant: Interpolant, length: Array, vds: Array) -> Indice
     return np.lexsort((across, along))
 
 
+def _collapse_all(drive: Drive, length: Array, vds: Array, vsb: Array) -> Array:
+    """Collapse the splines over all four axes to curves along the gate axis."""
+    bulk = bulk_coordinate(vsb, float(drive.interpolant.grid.sweep.vsb[0]))
+    stack = drive.interpolant.stack(drive.columns)
+    return stack.curves(length_coordinate(length), bulk, drain_coordinate(vds))
+
+
 def _solve_chunk(
-    drive: Drive, target: Array, length: Array, vds: Array, vsb: Array
+    drive: Drive, target: Array, lines: Array, shift: Array, vds: Array
 ) -> tuple[Array, Array, Array]:
+    """Solve on curves along the gate axis, given by their coefficients and thresholds."""
     spline, sweep = drive.interpolant, drive.interpolant.grid.sweep
     gate = spline.axes[3]
-    where = (length_coordinate(length), bulk_coordinate(vsb, float(sweep.vsb[0])))
-    lines = spline.stack(drive.columns).curves(*where, drain_coordinate(vds))
     factor = saturate(vds, spline.grid.condition.thermal_voltage)
-    shift = spline.threshold(length, vsb)
 
     def evaluate(places: Array) -> tuple[Array, Array]:
         """Scaled drive and slope at places of shape (n,) on the gate axis."""

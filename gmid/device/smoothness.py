@@ -68,7 +68,16 @@ def estimate_noise(points: Array, values: Array, usable: NDArray[np.bool_]) -> t
     if np.count_nonzero(pairs) < 20:
         return 0.0, 0.0
     opposite = (errors[..., 1:] * errors[..., :-1] < 0)[pairs]
-    return float(np.median(np.abs(errors[counted])) / 0.6745), float(np.mean(opposite))
+    return _quantile(np.abs(errors[counted]), 0.5) / 0.6745, float(np.mean(opposite))
+
+
+def _quantile(values: Array, share: float) -> float:
+    """Interpolate a quantile; numpy's own loads its masked arrays, which costs 25 ms cold."""
+    place = share * (values.size - 1)
+    low = int(place)
+    high = min(low + 1, values.size - 1)
+    ordered = np.partition(values, [low, high])
+    return float(ordered[low] + (place - low) * (ordered[high] - ordered[low]))
 
 
 def is_noisy(points: Array, values: Array, usable: NDArray[np.bool_]) -> bool:
@@ -144,4 +153,4 @@ def slopes_agree(
         return False
     rise = np.diff(values, axis=-1)
     mismatch = np.abs(integral - rise)[counted] / np.maximum(np.abs(rise), 0.05)[counted]
-    return bool(np.quantile(mismatch, share) < _SLOPE_MISMATCH)
+    return _quantile(mismatch, share) < _SLOPE_MISMATCH

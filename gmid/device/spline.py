@@ -230,7 +230,7 @@ def natural_axis(points: Array) -> SplineAxis:
     inner = points[2:-2] if degree == 3 else points[:0]
     breaks = np.concatenate((points[:1], inner, points[-1:]))
     knots = np.concatenate((np.repeat(points[0], degree), breaks, np.repeat(points[-1], degree)))
-    basis = np.stack([_span_basis(knots, degree, span) for span in range(breaks.size - 1)])
+    basis = _span_bases(knots, degree)
     axis = SplineAxis(points, breaks, basis, np.empty((0, 0)))
     span, place = axis.locate(points)
     rows = np.zeros((points.size, points.size))
@@ -273,27 +273,28 @@ def uniform_axis(start: float, stop: float, spans: int) -> SplineAxis:
     return SplineAxis(points, points, basis, operator, uniform=True)
 
 
-def _span_basis(knots: Array, degree: int, span: int) -> Array:
-    """Write the basis functions of one span as polynomials of the place within it."""
-    left, right = knots[span + degree], knots[span + degree + 1]
+def _span_bases(knots: Array, degree: int) -> Array:
+    """Write the basis functions of each span as polynomials of the place within it."""
+    left, right = knots[degree : -degree - 1], knots[degree + 1 : -degree]
     places = 0.5 - 0.5 * np.cos(np.pi * np.arange(degree + 1) / degree)
-    samples = np.stack(
-        [_cox_de_boor(knots, degree, span, left + place * (right - left)) for place in places]
-    )
+    samples = _cox_de_boor(knots, degree, left[:, None] + places * (right - left)[:, None])
     powers = places[:, None] ** np.arange(degree + 1)
-    return np.asarray(np.linalg.solve(powers, samples).T)
+    return np.swapaxes(np.linalg.solve(powers, samples), 1, 2)
 
 
-def _cox_de_boor(knots: Array, degree: int, span: int, x: float) -> Array:
-    """Evaluate the degree + 1 B-splines that live on a span [de Boor, chapter X]."""
-    found = np.ones(1)
-    home = span + degree
+def _cox_de_boor(knots: Array, degree: int, x: Array) -> Array:
+    """Evaluate the degree + 1 B-splines that live on each span [de Boor, chapter X].
+
+    Rows of x are the places within one span each; the functions come last.
+    """
+    found = np.ones((*x.shape, 1))
+    home = degree + np.arange(len(x))[:, None]
     for order in range(1, degree + 1):
-        grown = np.zeros(order + 1)
+        grown = np.zeros((*x.shape, order + 1))
         for index in range(order):
             low, high = knots[home - order + 1 + index], knots[home + 1 + index]
-            grown[index] += found[index] * (high - x) / (high - low)
-            grown[index + 1] += found[index] * (x - low) / (high - low)
+            grown[..., index] += found[..., index] * (high - x) / (high - low)
+            grown[..., index + 1] += found[..., index] * (x - low) / (high - low)
         found = grown
     return found
 

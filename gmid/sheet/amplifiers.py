@@ -11,6 +11,7 @@ from gmid.amplifier.checks import KINDS, Check, judge, spell_condition
 from gmid.amplifier.places import PLACES
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Supply
 from gmid.amplifier.prediction import NOISE_FREQUENCIES, Prediction, predict
+from gmid.amplifier.signal import to_db
 from gmid.amplifier.topology import NO_RESISTOR
 from gmid.circuit.circuit import Circuit
 from gmid.circuit.elements import Capacitor, Resistor, Transistor
@@ -157,6 +158,7 @@ def fill_amplifier(found: Reviewed) -> AmplifierSheet:
     ranges = [one.input_range(found.choices.saturation_margin) for one in _all(found)]
     load = float(np.asarray(plan.load_resistance))
     offset = found.first.offset(found.matching) if found.matching else None
+    rejection = found.first.rejection(found.matching) if found.matching else None
     return AmplifierSheet(
         name=plan.name,
         positions=plan.positions,
@@ -181,6 +183,12 @@ def fill_amplifier(found: Reviewed) -> AmplifierSheet:
             min(float(np.min(one.high)) for one in ranges),
         ),
         offset_sigma=None if offset is None else float(np.max(offset.sigma)),
+        supply_rejection_db=None
+        if rejection is None
+        else float(np.min(rejection.supply_rejection_db)),
+        common_mode_rejection_db=None
+        if rejection is None
+        else float(np.min(rejection.common_mode_rejection_db)),
         offset_shares=() if offset is None else tuple(_fill_offset(offset.variance, nominal)),
     )
 
@@ -308,7 +316,9 @@ def _fill_conditions(found: Reviewed, case: Prediction) -> list[ConditionRow]:
                 dc_gain_db=pick(loop.dc_gain_db, index),
                 gbw=pick(loop.gbw, index),
                 phase_margin=pick(loop.phase_margin, index),
+                loop_margin=pick(case.loop_margin, index),
                 input_to_output_gain_db=pick(loop.input_to_output_gain_db, index),
+                supply_to_output_gain_db=pick(to_db(loop.supply_gain), index),
                 settled_error=pick(loop.settled_error, index),
             ),
         )

@@ -57,12 +57,18 @@ class NoisePoint:
 
 @dataclass(frozen=True, kw_only=True)
 class CommonModeRow:
-    """The common-mode loop in one condition."""
+    """The common-mode loop in one condition.
+
+    `phase_margin` is the bench's, whose probe does not see the load of the gates it drives;
+    `loop_margin` that of the loop itself, by which it is judged [deg].
+    """
 
     dc_gain_db: float
     gbw: float
     phase_margin: float
+    loop_margin: float
     input_to_output_gain_db: float
+    supply_to_output_gain_db: float
     settled_error: float
 
 
@@ -152,6 +158,8 @@ class AmplifierSheet:
     input_range: tuple[float, float]
     offset_sigma: float | None = None
     offset_shares: tuple[Share, ...] = ()
+    supply_rejection_db: float | None = None
+    common_mode_rejection_db: float | None = None
     floor_current: float | None = None
     ratio_to_floor: float | None = None
 

@@ -226,7 +226,14 @@ def describe_amplifier(one: AmplifierSheet) -> str:
             "needs at the largest usable gm/Id of an ideal mirror stage."
         )
     if one.offset_sigma is not None:
-        parts.append(f"Input offset {spell_value(one.offset_sigma, 'V', 3)} (one sigma).")
+        parts.append(
+            f"At one sigma of mismatch: input offset {spell_value(one.offset_sigma, 'V', 3)}"
+        )
+    if one.supply_rejection_db is not None and one.common_mode_rejection_db is not None:
+        parts[-1] += (
+            f", supply rejection {one.supply_rejection_db:.1f} dB, common-mode rejection "
+            f"{one.common_mode_rejection_db:.1f} dB at DC; a matched circuit rejects wholly."
+        )
     return " ".join(parts)
 
 
@@ -309,7 +316,9 @@ def lay_out_conditions(one: AmplifierSheet) -> list[Block]:
         common = row.common_mode
         loop.append((
             name, f"{common.dc_gain_db:.1f}", spell_value(common.gbw, "Hz", 3),
-            f"{common.phase_margin:.1f}", f"{common.input_to_output_gain_db:.1f}",
+            f"{common.phase_margin:.1f}", f"{common.loop_margin:.1f}",
+            f"{common.input_to_output_gain_db:.1f}",
+            f"{common.supply_to_output_gain_db:.1f}",
             spell_value(common.settled_error, "V", 3), f"{row.control_share:.1%}",
         ))  # fmt: skip
     heads = (
@@ -317,12 +326,18 @@ def lay_out_conditions(one: AmplifierSheet) -> list[Block]:
         "slew rate", "settling to 1 %", "swing",
     )  # fmt: skip
     loops = (
-        "condition", "loop gain [dB]", "loop GBW", "loop PM [deg]", "in to out [dB]",
+        "condition", "loop gain [dB]", "loop GBW", "PM, bench [deg]", "PM [deg]", "in to out [dB]",
+        "supply to out [dB]",
         "settled error", "control/direct",
     )  # fmt: skip
     return [
         Grid(heads, tuple(signal), "As the open-loop, noise and step benches measure it."),
-        Grid(loops, tuple(loop), "Common-mode loop."),
+        Grid(
+            loops,
+            tuple(loop),
+            "Common-mode loop as its bench measures it, and the phase margin of the loop itself: "
+            "the bench's probe does not see the load of the gates it drives.",
+        ),
     ]
 
 

@@ -80,6 +80,6 @@ def _describe_loops(one: AmplifierSheet) -> str:
         f"{span([r.supply_current for r in rows], 'A')}. Common-mode loop: gain "
         f"{span([r.common_mode.dc_gain_db for r in rows], 'dB')}, GBW "
         f"{span([r.common_mode.gbw for r in rows], 'Hz')}, phase margin "
-        f"{span([r.common_mode.phase_margin for r in rows], 'deg')}, settled error "
+        f"{span([r.common_mode.loop_margin for r in rows], 'deg')}, settled error "
         f"{span([r.common_mode.settled_error for r in rows], 'V')}."
     )

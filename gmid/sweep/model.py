@@ -7,9 +7,9 @@ were n-channel.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from typing import Any
+from typing import Any, Protocol, runtime_checkable
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +19,20 @@ from gmid.errors import DataFault, UnknownName, advise
 from gmid.nomenclature import AXES, find_quantity
 
 Array = NDArray[np.float64]
+
+
+@runtime_checkable
+class ReadTogether(Protocol):
+    """Quantities that cost less when several are read at once."""
+
+    def read_all(self, names: Iterable[str]) -> None:
+        """Read several.
+
+        Parameters
+        ----------
+        names : iterable of str
+            Those not held are passed over.
+        """
 
 
 @dataclass(frozen=True)
@@ -136,6 +150,22 @@ class Sweep:
 
     def __contains__(self, name: object) -> bool:
         return name in self.values
+
+    def fetch(self, names: Iterable[str]) -> None:
+        """Read quantities together, where they are read from a file when asked for.
+
+        Parameters
+        ----------
+        names : iterable of str
+            Those that are not there are passed over.
+
+        Examples
+        --------
+        >>> from gmid.device.example import example_sweep
+        >>> example_sweep().fetch(["id", "gm"])
+        """
+        if isinstance(self.values, ReadTogether):
+            self.values.read_all(names)
 
     def __repr__(self) -> str:
         sizes = " x ".join(f"{getattr(self, name).size} {name}" for name in AXES)

@@ -94,8 +94,9 @@ class StoredValues(Mapping[str, Array]):
         if not wanted:
             return
         with OpenedTable(self._path) as root:
+            group = root[self._group]
             for name in wanted:
-                self._read[name] = _checked(root[self._group][name], self._path)
+                self._read[name] = _checked(group[name], self._path)
 
     def __iter__(self) -> Iterator[str]:
         return iter(self._names)

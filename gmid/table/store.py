@@ -7,7 +7,6 @@ file holds grid data alone; interpolation is built on opening.
 
 from __future__ import annotations
 
-import hashlib
 import json
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -217,6 +216,8 @@ def combine_digests(entries: Sequence[IndexEntry]) -> str:
     >>> len(combine_digests([]))
     64
     """
+    import hashlib
+
     lines = sorted(f"{group_name(e.device, e.condition)} {e.digest}" for e in entries)
     return hashlib.sha256("\n".join(lines).encode()).hexdigest()
 

@@ -35,8 +35,10 @@ def main() -> None:
     for name, words in charts.items():
         run(python, "chart", table, *words, "-o", OUT / name, "--force")
     run(python, "filter", "demo/flow_meter.toml")
-    run(python, "check", "demo/channel_amplifier_plan.toml")
-    print(f"\nDone. The charts are in {OUT.relative_to(ROOT)}.")
+    for name in ("channel_amplifier", "flow_meter"):
+        run(python, "size", f"demo/{name}.toml", "-o", OUT / name, "--force")
+    run(python, "check", OUT / "flow_meter" / "plan.toml")
+    print(f"\nDone. Open {OUT.relative_to(ROOT)}/flow_meter/sheet.html.")
 
 
 def run(python: Path, *arguments: object) -> None:

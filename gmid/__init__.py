@@ -32,12 +32,14 @@ if TYPE_CHECKING:
     from gmid.request.reading import read_request as read_request
     from gmid.tasks.checking import check as check
     from gmid.tasks.demanding import demands as demands
+    from gmid.tasks.sizing import size as size
 
 __all__ = [
     "check",
     "demands",
     "open_table",
     "read_request",
+    "size",
 ]
 
 _HOMES = {
@@ -45,6 +47,7 @@ _HOMES = {
     "demands": "gmid.tasks.demanding",
     "open_table": "gmid.device.opening",
     "read_request": "gmid.request.reading",
+    "size": "gmid.tasks.sizing",
 }
 """Module of each public name: loaded when the name is first used, so that start-up stays light."""
 

@@ -12,13 +12,17 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gmid.amplifier.signal import OUTPUT, differential_gain
+from gmid.amplifier.symmetry import find_twin
 from gmid.amplifier.topology import build_circuit
 from gmid.circuit.bias import Bias, solve_bias
+from gmid.circuit.circuit import Circuit
 
 if TYPE_CHECKING:
     from gmid.amplifier.prediction import Prediction
 
 Array = NDArray[np.float64]
+Start = dict[str, Array]
+"""Node voltages to begin from [V]."""
 
 OVERDRIVE = 0.4
 """Differential input that switches the tail to one side [V]."""
@@ -84,15 +88,38 @@ class Swing:
 
 
 def _solve_at(
-    found: Prediction, *, difference: ArrayLike = 0.0, input_level: Array | None = None
-) -> Bias:
-    """Solve the bench at other inputs, from its own bias point."""
+    found: Prediction, *, difference: ArrayLike = 0.0, input_level: Array | None = None,
+    start: Start | None = None,
+) -> Bias:  # fmt: skip
+    """Solve the bench at other inputs, from its own bias point unless another start is given."""
     level = found.supply.input_level.at(found.voltage) if input_level is None else input_level
-    circuit = build_circuit(
-        found.plan, voltage=found.voltage, vcm=found.supply.common_mode.at(found.voltage),
-        input_level=level, reference_current=found.reference_current, difference=difference,
+    half = np.asarray(difference, dtype=np.float64) / 2
+    circuit = found.circuit.with_values({"vip": level + half, "vin": level - half})
+    return solve_bias(
+        circuit, found.devices, start=found.bias if start is None else start,
+        mirror=_pair_nodes(circuit) if input_level is not None else None,
     )  # fmt: skip
-    return solve_bias(circuit, found.devices, start=found.bias)
+
+
+def _pair_nodes(circuit: Circuit) -> dict[str, str]:
+    """Pair the nodes of one side with those of the other, which have the same voltages."""
+    pairs = {node: find_twin(node) for node in circuit.nodes}
+    return {node: twin for node, twin in pairs.items() if node > twin}
+
+
+def _start_between(bias: Bias, end: NDArray[np.intp], share: Array) -> Start:
+    """Give node voltages between a point of a sweep and the one before it, in a straight line.
+
+    Where the point has no solution they are those of the one before it.
+    """
+    start = {}
+    for node, voltage in bias.voltages.items():
+        swept = np.broadcast_to(voltage, bias.batch)
+        before = np.take_along_axis(swept, np.maximum(end - 1, 0)[None], axis=0)[0]
+        here = np.take_along_axis(swept, end[None], axis=0)[0]
+        rise = np.where(np.isfinite(here), here - before, 0.0)
+        start[node] = before + _along(share, rise)
+    return start
 
 
 def _smallest_headroom(bias: Bias) -> Array:
@@ -124,7 +151,11 @@ def trace_curve(found: Prediction, input: Array) -> Curve:
     >>> bool(curve.output[1] > 0.05)
     True
     """
-    bias = _solve_at(found, difference=input)
+    return _read_curve(_solve_at(found, difference=input), input)
+
+
+def _read_curve(bias: Bias, input: Array) -> Curve:
+    """Read the static transfer from solutions at given inputs."""
     network = bias.linearise(drives=("vip", "vin"), noise=False)
     gain = differential_gain(network)(0.0).real
     output = bias.voltage(OUTPUT[0], OUTPUT[1])
@@ -155,12 +186,15 @@ def measure_swing(found: Prediction, margin: float) -> Swing:
     True
     """
     scale = 2.5 * found.voltage / np.abs(found.signal.dc_gain)
-    curve = trace_curve(found, _along(np.linspace(0.0, 1.0, _POINTS) ** 1.5, scale))
-    drop, room = _excesses(curve, curve.gain[:1], margin)
-    ends = [_bracket(excess, curve.input) for excess in (drop, room)]
+    inputs = _along(np.linspace(0.0, 1.0, _POINTS) ** 1.5, scale)
+    bias = _solve_at(found, difference=inputs)
+    curve = _read_curve(bias, inputs)
     share = np.linspace(0.0, 1.0, _FINE)
-    inputs = np.concatenate([low + _along(share, high - low) for low, high in ends])
-    fine = trace_curve(found, inputs)
+    ends = [_first_end(excess) for excess in _excesses(curve, curve.gain[:1], margin)]
+    inputs = np.concatenate([_between(curve.input, end, share) for end in ends])
+    starts = [_start_between(bias, end, share) for end in ends]
+    start = {node: np.concatenate([one[node] for one in starts]) for node in starts[0]}
+    fine = _read_curve(_solve_at(found, difference=inputs, start=start), inputs)
     drop, room = _excesses(fine, curve.gain[:1], margin)
     return Swing(
         _cross(drop[:_FINE], fine.output[:_FINE]), _cross(room[_FINE:], fine.output[_FINE:])
@@ -176,11 +210,11 @@ def _along(values: Array, scale: Array) -> Array:
     return values.reshape(-1, *(1,) * np.ndim(scale)) * scale
 
 
-def _bracket(excess: Array, x: Array) -> tuple[Array, Array]:
-    k = _first_end(excess)
-    pick = [np.take_along_axis(x, np.maximum(k - 1, 0)[None], axis=0)[0],
-            np.take_along_axis(x, k[None], axis=0)[0]]  # fmt: skip
-    return pick[0], pick[1]
+def _between(x: Array, end: NDArray[np.intp], share: Array) -> Array:
+    """Give places between a point of a sweep and the one before it."""
+    low = np.take_along_axis(x, np.maximum(end - 1, 0)[None], axis=0)[0]
+    high = np.take_along_axis(x, end[None], axis=0)[0]
+    return np.asarray(low + _along(share, high - low))
 
 
 def _first_end(excess: Array) -> NDArray[np.intp]:
@@ -246,11 +280,14 @@ def measure_input_range(found: Prediction, margin: float) -> InputRange:
     level = np.broadcast_to(found.supply.input_level.at(found.voltage), found.batch)
     low = np.stack([level, level])
     high = np.stack([np.zeros(found.batch), np.broadcast_to(found.voltage, found.batch)])
-    for _ in range(2):
-        x = low + _along(np.linspace(0.0, 1.0, 9), high - low)
-        bias = _solve_at(found, input_level=x)
+    share = np.linspace(0.0, 1.0, 9)
+    x, start = low + _along(share, high - low), None
+    for is_last in (False, True):
+        bias = _solve_at(found, input_level=x, start=start)
         excess = np.where(bias.inside, _smallest_headroom(bias) - margin, -1.0)
-        low, high = _bracket(excess, x)
+        if not is_last:
+            end = _first_end(excess)
+            x, start = _between(x, end, share), _start_between(bias, end, share)
     return InputRange(*_cross(excess, x))
 
 

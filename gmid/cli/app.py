@@ -23,6 +23,7 @@ _COMMANDS = {
     "query": ("querying", "query_command"),
     "chart": ("charting", "chart_command"),
     "filter": ("filtering", "filter_command"),
+    "size": ("sizing", "size_command"),
     "check": ("checking", "check_command"),
     "netlist": ("netlisting", "netlist_command"),
     "simulate": ("simulating", "simulate_command"),

@@ -44,6 +44,7 @@ class Structure:
         self._elements: dict[str, Element] = {}
         self._noise: dict[str, NoiseSource] = {}
         self._pencil: Pencil | None = None
+        self._unknowns: tuple[str, ...] | None = None
         self._checked: set[bool] = set()
 
     @property
@@ -64,8 +65,10 @@ class Structure:
     @property
     def unknowns(self) -> tuple[str, ...]:
         """Nodes, then branch currents and internal states."""
-        extra = (element.unknown for element in self._elements.values())
-        return (*self._nodes, *(name for name in extra if name is not None))
+        if self._unknowns is None:
+            extra = (element.unknown for element in self._elements.values())
+            self._unknowns = (*self._nodes, *(name for name in extra if name is not None))
+        return self._unknowns
 
     @property
     def batch(self) -> tuple[int, ...]:
@@ -88,6 +91,7 @@ class Structure:
         if name in self._elements or name in self._noise:
             raise UsageFault(f"the network already has an element named {name}.")
         self._pencil = None
+        self._unknowns = None
         self._checked.clear()
 
     def _insert(

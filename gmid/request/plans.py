@@ -56,6 +56,34 @@ class PlanFile:
     plans: tuple[AmplifierPlan, ...]
 
 
+def has_filter(file: PlanFile) -> bool:
+    """Tell whether the whole filter can be rebuilt from a plan file.
+
+    Parameters
+    ----------
+    file : PlanFile
+        As read.
+
+    Returns
+    -------
+    bool
+        True where it is an active-RC filter and every amplifier says where it stands; a gm-c
+        filter's elements are its amplifiers, so that only sizing knows it as a whole.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_plan
+    >>> from gmid.request.reading import parse_request
+    >>> from gmid.request.request import EXAMPLE
+    >>> has_filter(PlanFile(parse_request(EXAMPLE), (example_plan(),)))
+    False
+    """
+    spec = file.request.spec
+    if spec is None or spec.style != "active-rc":
+        return False
+    return all(plan.positions for plan in file.plans)
+
+
 def read_plan(path: str | Path) -> PlanFile:
     """Read a plan file.
 

@@ -7,8 +7,8 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from gmid.condition import Condition
-from gmid.request.plans import PlanFile, read_plan
-from gmid.request.process import open_bench
+from gmid.request.plans import PlanFile, has_filter, read_plan
+from gmid.request.process import Bench, open_bench
 from gmid.request.request import Request
 from gmid.sheet.amplifiers import Reviewed, fill_amplifier, review_plan
 from gmid.sheet.assembly import describe_supply, list_cautions, list_provenance
@@ -89,8 +89,27 @@ def check(plan: str | Path | PlanFile, *, progress: Progress | None = None) -> C
     sheet = assemble_sheet(
         request, [fill_amplifier(one) for one in reviews], bench.conditions,
         digest=bench.table.digest, is_demanded=any(one.demands for one in file.plans),
+        filtered=_review_filter(file, bench, progress),
     )  # fmt: skip
     return Checked(file, reviews, sheet)
+
+
+def _review_filter(file: PlanFile, bench: Bench, progress: Progress | None) -> FilterSheet | None:
+    """Put the amplifiers into their filter, where the plan has one and fills every position."""
+    request = file.request
+    if not has_filter(file):
+        return None
+    from gmid.amplifier.filtering.reviewing import review_filter
+    from gmid.tasks.demanding import demands
+    from gmid.tasks.filter_sizing import fill_reviewed
+
+    def tell(words: str) -> None:
+        if progress:
+            progress(words, 0, 1)
+
+    found = demands(request)
+    review = review_filter(found, file.plans, bench, request.supply, progress=tell)
+    return fill_reviewed(found, review)
 
 
 def assemble_sheet(
@@ -136,6 +155,6 @@ def assemble_sheet(
         cautions=list_cautions(conditions, request.matching, has_passives="passives" in request.data
                                or filtered is None),
         provenance=list_provenance(request.process.table, digest, request.name),
-        is_demanded=is_demanded,
+        is_demanded=is_demanded or filtered is not None,
         sentence=sentence,
     )  # fmt: skip

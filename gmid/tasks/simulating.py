@@ -11,7 +11,7 @@ from gmid.amplifier.checks import spell_condition
 from gmid.amplifier.prediction import predict
 from gmid.condition import Condition
 from gmid.errors import FileTrouble, UsageFault
-from gmid.request.plans import PlanFile, read_plan
+from gmid.request.plans import PlanFile, has_filter, read_plan
 from gmid.request.process import open_bench
 from gmid.simulation import inline_includes
 from gmid.simulation.comparison import Comparison, compare_plan
@@ -150,5 +150,19 @@ def simulate(
             gbw=float(predicted.signal.gbw), parts=parts,
         )  # fmt: skip
         yield Compared(one.name, where, tuple(compare_plan(predicted, simulated)))
+    if has_filter(file):
+        from gmid.tasks.demanding import demands
+        from gmid.tasks.filter_simulating import compare_filter
+
+        whole = demands(request)
+        for condition in models:
+            for voltage in levels:
+                where = spell_condition(condition, voltage)
+                if progress:
+                    progress(f"filter in {where}", len(runs), len(runs) + 1)
+                yield Compared("filter", where, compare_filter(
+                    whole, file, bench.devices(condition), models[condition], voltage=voltage,
+                    quick="noise" not in parts,
+                ))  # fmt: skip
     if progress:
         progress("simulated", len(runs), len(runs))

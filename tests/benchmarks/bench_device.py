@@ -2,9 +2,9 @@
 
     python tests/benchmarks/bench_device.py
 
-Prints ratios: forward and one point against
-a linear regular-grid interpolator, the inverse against a bracketing root finder on the same
-spline, and the model that a circuit's solver uses.
+Prints ratios: forward and one point against a linear regular-grid interpolator, the inverse
+against a bracketing root finder on the same spline; and times: what a device costs when it is
+first asked, and the model that a circuit's solver uses.
 """
 
 from __future__ import annotations
@@ -101,6 +101,28 @@ def inverse(device: Device) -> float:
     return theirs / ours
 
 
+def first_asked() -> None:
+    """A device just opened: its first query, and models of three lengths."""
+    jobs: dict[str, Callable[[Device], Any]] = {
+        "inverse at one length": lambda d: d.at(gm_over_id=[5, 10, 20], length=0.5e-6, vds=0.6),
+        "all quantities at one length": lambda d: d.at(vgs=[0.5, 0.6], length=0.5e-6, vds=0.6).read(
+            d.fields
+        ),
+        "current at three lengths": lambda d: d.model(
+            [0.3e-6, 0.5e-6, 1e-6]
+        ).current_and_derivatives(0.6, 0.9, 0.0),
+        "small signal at three lengths": lambda d: d.model([0.3e-6, 0.5e-6, 1e-6]).small_signal(
+            0.6, 0.9, 0.0
+        ),
+        "all quantities at many lengths": lambda d: d.at(
+            vgs=0.6, length=np.linspace(0.2e-6, 2e-6, 100), vds=0.6
+        ).read(d.fields),
+    }
+    for what, job in jobs.items():
+        took = best(lambda job=job: job(open_table(TABLE).device("nmos")), 5)
+        print(f"first asked, {what}: {took * 1e3:.1f} ms")
+
+
 def solver(device: Device) -> None:
     """The model of a circuit's solver: 25 transistors, 1000 candidates."""
     model = device.model([0.3e-6, 0.5e-6, 1e-6])
@@ -117,6 +139,7 @@ def solver(device: Device) -> None:
 def main() -> None:
     """Run everything on the demo table."""
     device = open_table(TABLE).device("nmos")
+    first_asked()
     forward(device)
     one_point(device)
     inverse(device)

@@ -32,6 +32,7 @@ if TYPE_CHECKING:
     from gmid.request.reading import read_request as read_request
     from gmid.tasks.checking import check as check
     from gmid.tasks.demanding import demands as demands
+    from gmid.tasks.sheeting import sheet as sheet
     from gmid.tasks.sizing import size as size
 
 __all__ = [
@@ -39,6 +40,7 @@ __all__ = [
     "demands",
     "open_table",
     "read_request",
+    "sheet",
     "size",
 ]
 
@@ -47,6 +49,7 @@ _HOMES = {
     "demands": "gmid.tasks.demanding",
     "open_table": "gmid.device.opening",
     "read_request": "gmid.request.reading",
+    "sheet": "gmid.tasks.sheeting",
     "size": "gmid.tasks.sizing",
 }
 """Module of each public name: loaded when the name is first used, so that start-up stays light."""

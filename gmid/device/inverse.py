@@ -16,7 +16,7 @@ from gmid.device.drive import Drive
 from gmid.device.interpolant import Interpolant
 from gmid.device.reach import refuse_targets
 from gmid.device.roots import bracket, solve_false_position, solve_newton
-from gmid.device.spline import Array, Indices
+from gmid.device.spline import Array, Indices, SplineAxis
 
 _CHUNK = 512
 _SAMPLES = 81
@@ -103,16 +103,6 @@ def _solve_chunk(
     gate = spline.axes[3]
     factor = saturate(vds, spline.grid.condition.thermal_voltage)
 
-    def evaluate(places: Array) -> tuple[Array, Array]:
-        """Scaled drive and slope at places of shape (n,) on the gate axis."""
-        span, place = gate.locate(places)
-        columns = (span[:, None] + np.arange(4))[:, :, None]
-        picked = np.take_along_axis(lines, columns, axis=1)
-        weights, slopes = gate.both(span, place)
-        values = np.einsum("ncq,nc->nq", picked, weights)
-        tilts = np.einsum("ncq,nc->nq", picked, slopes)
-        return drive.values(values, factor), drive.slopes(values, tilts, factor)
-
     nodes = (lines[:, :-2] + 4 * lines[:, 1:-1] + lines[:, 2:]) / 6
     curve = drive.values(nodes, factor[:, None])
     ends = [
@@ -120,13 +110,37 @@ def _solve_chunk(
         for vgs in (sweep.vgs[0], sweep.vgs[-1])
     ]
     places = np.broadcast_to(gate.points, curve.shape)
-    curve = np.where(places <= ends[0][:, None], evaluate(ends[0])[0][:, None], curve)
-    curve = np.where(places >= ends[1][:, None], evaluate(ends[1])[0][:, None], curve)
+    first, last = (drive.values(_read_lines(gate, lines, end), factor) for end in ends)
+    curve = np.where(places <= ends[0][:, None], first[:, None], curve)
+    curve = np.where(places >= ends[1][:, None], last[:, None], curve)
     places = np.clip(places, ends[0][:, None], ends[1][:, None])
     cell, target, low, high = bracket(drive.sense, curve, target)
     rows = np.arange(target.size)
+    step = gate.breaks[1] - gate.breaks[0]
+    powers = np.einsum("cp,ncq->pnq", gate.basis[0], _pick(lines, cell))
+
+    def evaluate(places: Array) -> tuple[Array, Array]:
+        """Scaled drive and slope at places of shape (n,) within the cells found."""
+        t = ((places - gate.breaks[cell]) / step)[:, None]
+        values = ((powers[3] * t + powers[2]) * t + powers[1]) * t + powers[0]
+        tilts = ((3 * powers[3] * t + 2 * powers[2]) * t + powers[1]) / step
+        return drive.values(values, factor), drive.slopes(values, tilts, factor)
+
     root = solve_newton(evaluate, target, places[rows, cell], places[rows, cell + 1], drive.sense)
     return np.where(np.isnan(target), np.nan, root + shift), low, high
+
+
+def _read_lines(gate: SplineAxis, lines: Array, places: Array) -> Array:
+    """Evaluate each curve, of coefficients along the gate axis, at a place of its own."""
+    span, place = gate.locate(places)
+    return np.asarray(np.einsum("ncq,nc->nq", _pick(lines, span), gate.weights(span, place)))
+
+
+def _pick(lines: Array, span: Indices) -> Array:
+    """Take the coefficients that bear on one span of each curve."""
+    count, size, _ = lines.shape
+    first = size * np.arange(count) + span
+    return np.asarray(lines.reshape(count * size, -1)[first[:, None] + np.arange(4)])
 
 
 def solve_diode(

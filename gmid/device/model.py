@@ -15,7 +15,8 @@ from numpy.typing import ArrayLike, NDArray
 from gmid.device.capacitance import assemble_matrix
 from gmid.device.channel import saturate
 from gmid.device.collapsed import OFF_SLOPE, ON_SLOPE, Place
-from gmid.device.interpolant import Interpolant, restore
+from gmid.device.interpolant import Interpolant
+from gmid.device.restoring import restore
 from gmid.device.spline import Array, Indices
 
 EDGE = 1e-6

@@ -129,7 +129,7 @@ class OperatingPoint:
         if name in BIAS:
             return np.asarray(getattr(self, name))[()]
         value = self._found[name]
-        return np.asarray(value * self.count)[()] if QUANTITIES[name].scaling else value
+        return np.multiply(value, self.count) if QUANTITIES[name].scaling else value
 
     def scaled(
         self,

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from functools import lru_cache
 
 from gmid.device.capacitance import combine, find_capacitances
 from gmid.device.spline import Array
@@ -70,11 +71,16 @@ def list_needs(names: Sequence[str], stored: frozenset[str]) -> list[str]:
     >>> list_needs(["ft"], frozenset({"id", "gm", "cgg"}))
     ['id', 'gm', 'cgg']
     """
+    return list(_list_needs(tuple(names), stored))
+
+
+@lru_cache(maxsize=256)
+def _list_needs(names: tuple[str, ...], stored: frozenset[str]) -> tuple[str, ...]:
     found: list[str] = []
     for name in names:
         for part in _NEEDS.get(name, (name,)):
             found.extend(find_capacitances(stored)[part] if part in CAPACITANCES else [part])
-    return list(dict.fromkeys(found))
+    return tuple(dict.fromkeys(found))
 
 
 def derive_answer(

@@ -68,6 +68,9 @@ def settle_axes(
         if values is None:
             settled[name] = None
             continue
+        if values.size and axis[0] <= values.min() and values.max() <= axis[-1]:
+            settled[name] = np.array(values)
+            continue
         slack = _SLACK * max(abs(float(axis[0])), abs(float(axis[-1])), 0.0)
         slack = max(slack, 0.0 if name == "length" else _SLACK)
         inside = (values >= axis[0] - slack) & (values <= axis[-1] + slack)

@@ -7,7 +7,11 @@ value, or its slope, at any place.
 
 from __future__ import annotations
 
+from bisect import bisect_right
+from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -176,13 +180,47 @@ class SplineAxis:
             return self.weights(span, place), self.slopes(span, place)
         return self._weigh(span, place, slopes=True)
 
+    def place_one(self, x: float) -> tuple[int, Array]:
+        """Do what `locate` and `weights` do for a single place, in a tenth of the time.
+
+        Parameters
+        ----------
+        x : float
+            Place.
+
+        Returns
+        -------
+        span : int
+            Index of the span.
+        weights : ndarray, shape (order,)
+            Weights [-].
+
+        Examples
+        --------
+        >>> natural_axis(np.array([0.0, 1.0])).place_one(0.25)
+        (0, array([0.75, 0.25]))
+        """
+        breaks = self._breaks
+        span = bisect_right(breaks, x, 1, len(breaks) - 1) - 1
+        share = (x - breaks[span]) / (breaks[span + 1] - breaks[span])
+        powers = [1.0]
+        for _ in range(self.order - 1):
+            powers.append(powers[-1] * share)
+        return span, self.basis[span].dot(powers)
+
+    @cached_property
+    def _breaks(self) -> list[float]:
+        return list(self.breaks.tolist())
+
     def _weigh(self, span: Indices, place: Array, *, slopes: bool) -> tuple[Array, Array]:
         """Run Horner's rule over all places at once, one coefficient after the other."""
         weights = np.empty((self.order, place.size))
         steep = np.zeros((self.order, place.size if slopes else 0))
         shared = self.uniform or self.spans == 1
         for column in range(self.order):
-            powers = self.basis[0, column] if shared else self.basis[:, column].T[:, span]
+            powers: Sequence[Any] = self.basis[0, column]
+            if not shared:
+                powers = [table.take(span, mode="clip") for table in self.basis[:, column].T]
             value, slope = weights[column], steep[column]
             value[:] = powers[-1]
             for power in range(self.order - 2, -1, -1):

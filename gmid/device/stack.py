@@ -7,7 +7,9 @@ group is one matrix product.
 
 from __future__ import annotations
 
+from bisect import bisect_right
 from dataclasses import dataclass
+from itertools import groupby
 
 import numpy as np
 
@@ -15,7 +17,7 @@ from gmid.device.cells import group_points, multiply_weights, place_points, sort
 from gmid.device.spline import Array, SplineAxis
 
 _TOGETHER = 512
-"""Points whose weights are multiplied out at a time, so that they stay in the cache."""
+"""Points whose partial sums are held at a time, so that they stay in the cache."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -65,28 +67,47 @@ class Stack:
         >>> stack.values(zero, zero, zero, zero + 0.3).round(12)
         array([[0.3]])
         """
-        axes = (self.length, self.vds, self.gate, self.vsb)
-        spans, weights = place_points(axes, (length, vds, gate, vsb))
-        order, starts, corners = sort_cells(tuple(axis.spans for axis in axes), spans)
-        weights = [weight[order] for weight in weights]
-        sizes = [axis.order for axis in axes]
+        axes = (self.length, self.vds, self.vsb, self.gate)
+        points = (length, vds, vsb, gate)
+        located = [axis.locate(point) for axis, point in zip(axes, points, strict=True)]
+        order, starts, corners = sort_cells(
+            tuple(axis.spans for axis in axes), [span for span, _ in located]
+        )
+        weights = [
+            axis.weights(span[order], place[order])
+            for axis, (span, place) in zip(axes, located, strict=True)
+        ]
+        bounds, corners = _split(starts, corners, length.size)
         found = np.empty((length.size, self.coefficients.shape[-1]))
-        base, outer = 0, np.empty((0, int(np.prod(sizes))))
-        for start, stop, (a, b, c, d) in zip(
-            starts, [*starts[1:], length.size], corners, strict=True
-        ):
-            block = self.coefficients[
-                a : a + sizes[0], b : b + sizes[1], c : c + sizes[2], d : d + sizes[3]
-            ].reshape(outer.shape[1], -1)
-            for first in range(start, stop, _TOGETHER):
-                last = min(first + _TOGETHER, stop)
-                if last > base + len(outer):
-                    base, end = first, max(first + _TOGETHER, last)
-                    outer = multiply_weights([weight[base:end] for weight in weights])
-                found[first:last] = outer[first - base : last - base] @ block
-        back = np.empty_like(found)
-        back[order] = found
-        return back
+        first = 0
+        while first < len(corners):
+            last = bisect_right(bounds, bounds[first] + _TOGETHER) - 1
+            part = slice(bounds[first], bounds[last])
+            found[order[part]] = self._multiply(
+                [weight[part] for weight in weights], bounds[first : last + 1], corners[first:last]
+            )
+            first = last
+        return found
+
+    def _multiply(
+        self, weights: list[Array], bounds: list[int], corners: list[list[int]]
+    ) -> Array:  # fmt: skip
+        """Sum up points sorted by cell: length and vds for each cell, the others point by point."""
+        a, b, d, c = (axis.order for axis in (self.length, self.vds, self.vsb, self.gate))
+        outer, inner = multiply_weights(weights[:2]), multiply_weights(weights[:1:-1])
+        size = d * self.coefficients.shape[-1]
+        lines = np.empty((len(outer), c * size))
+        cells = zip(bounds, bounds[1:], corners, strict=False)
+        for (i, j, m), run in groupby(cells, key=lambda cell: cell[2][:3]):
+            members = list(run)
+            left, right = members[0][2][3], members[-1][2][3] + c
+            row = self.coefficients[i : i + a, j : j + b, left:right, m : m + d]
+            row = row.reshape(a * b, -1)
+            for start, stop, corner in members:
+                here = slice(start - bounds[0], stop - bounds[0])
+                k = corner[3] - left
+                np.dot(outer[here], row[:, k * size : (k + c) * size], out=lines[here])
+        return np.asarray(np.matmul(inner[:, None], lines.reshape(*inner.shape, -1))[:, 0])
 
     def curves(self, length: Array, vsb: Array, vds: Array) -> Array:
         """Collapse to coefficients along the gate axis alone.
@@ -126,3 +147,18 @@ class Stack:
         *sizes, count = self.coefficients.shape
         word = "quantity" if count == 1 else "quantities"
         return f"Stack({' x '.join(map(str, sizes))}, {count} {word})"
+
+
+def _split(
+    starts: list[int], corners: list[list[int]], total: int
+) -> tuple[list[int], list[list[int]]]:
+    """Give the bounds of cells, those of too many points cut into several."""
+    if max(np.diff(starts, append=total), default=0) <= _TOGETHER:
+        return [*starts, total], corners
+    bounds: list[int] = []
+    cells: list[list[int]] = []
+    for start, stop, corner in zip(starts, [*starts[1:], total], corners, strict=True):
+        pieces = range(start, stop, _TOGETHER)
+        bounds += pieces
+        cells += [corner] * len(pieces)
+    return [*bounds, total], cells

@@ -255,10 +255,13 @@ class Sheet:
         )
 
     def _repr_html_(self) -> str:
+        from html import escape
+
         from gmid.sheet.html import write_html
         from gmid.sheet.outline import lay_out
 
-        return write_html(lay_out(self), self.figures, title=self.title)
+        page = write_html(lay_out(self), self.figures, title=self.title)
+        return f'<iframe srcdoc="{escape(page)}" style="width: 100%; height: 50em"></iframe>'
 
     def to_json(self) -> dict[str, Any]:
         """Give the sheet as plain data.

@@ -252,7 +252,7 @@ def draw_trade_off(found: FilterDemands) -> Figure:
     is_gm_c = found.spec.style == "gm-c"
     prefix, power = choose_prefix([trade.chosen[1]])
     divisor = float(f"1e{power}")
-    figure = new_figure(100, 80)
+    figure = new_figure(160, 80)
     axes = figure.add_subplot()
     there = np.isfinite(trade.intrinsic_gain)
     gain_db = 20.0 * np.log10(trade.intrinsic_gain[there])

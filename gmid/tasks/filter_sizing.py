@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import replace
 
+import numpy as np
+
 from gmid.amplifier.filtering.decks import write_filter_deck
 from gmid.amplifier.filtering.responses import FilterResponse
 from gmid.amplifier.filtering.reviewing import FilterReview
@@ -25,6 +27,9 @@ from gmid.tasks.netlists import write_benches
 from gmid.tasks.sized import Sizing
 
 Progress = Callable[[str, int, int], None]
+
+_MOST_CURVES = 8
+"""That can be told apart in one figure."""
 
 
 def size_filter_request(
@@ -79,7 +84,7 @@ def size_filter_request(
     )  # fmt: skip
     figures = {
         **draw_filter(found.demands),
-        "filter_response": draw_realised(found.demands, _choose_curves(found.review.responses)),
+        "filter_response": draw_realised(found.demands, _choose_curves(found)),
     }
     for one in reviews:
         figures |= draw_figures(one)
@@ -183,14 +188,17 @@ def fix_capacitor(asked: Request, found: FilterSizing) -> Request:
     )
 
 
-def _choose_curves(responses: Sequence[FilterResponse]) -> list[ResponseCurve]:
+def _choose_curves(found: FilterSizing) -> list[ResponseCurve]:
     """Take the tuned response of every condition, at the passives' nominal corner."""
+    low, high = found.demands.plane.fine.passband
     best: dict[str, FilterResponse] = {}
-    for one in responses:
+    for one in found.review.responses:
         held = best.get(one.condition)
         if one.tuned and (held is None or abs(one.rscale - 1) < abs(held.rscale - 1)):
             best[one.condition] = one
-    return [
-        ResponseCurve(name, one.frequency, one.gain_db, one.deviation_db, 0.0, False)
-        for name, one in best.items()
-    ][:8]
+    curves = []
+    for name, one in list(best.items())[:_MOST_CURVES]:
+        inside = (one.frequency >= low) & (one.frequency <= high)
+        deviation = np.where(inside, one.deviation_db, np.nan)
+        curves.append(ResponseCurve(name, one.frequency, one.gain_db, deviation, 0.0, False))
+    return curves

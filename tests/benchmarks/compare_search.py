@@ -157,7 +157,7 @@ def main() -> None:
     parser.add_argument("what", choices=("requests", "evolution"))
     parser.add_argument("names", nargs="*")
     parser.add_argument("--generations", type=int, default=150)
-    asked = parser.parse_args()
+    asked = parser.parse_intermixed_args()
     if asked.what == "requests":
         show_requests(asked.names or list_names())
     else:

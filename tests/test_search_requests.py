@@ -14,7 +14,7 @@ EXPECTED = tomllib.loads((FOLDER / "expected.toml").read_text())
 NAMES = sorted(
     file.stem
     for file in FOLDER.glob("*.toml")
-    if file.stem != "expected" and not file.stem.startswith("filter_")
+    if not file.stem.startswith(("expected", "filter_"))
 )
 
 

@@ -25,7 +25,13 @@ from gmid.amplifier.filtering.grouping import (
     regroup,
 )
 from gmid.amplifier.filtering.levelling import level_filter
-from gmid.amplifier.filtering.poles import WHITE_NOISE_FACTOR, estimate_noise_factor, estimate_pole
+from gmid.amplifier.filtering.poles import (
+    BUILT_SHARES,
+    OWN_SHARES,
+    WHITE_NOISE_FACTOR,
+    estimate_noise_factor,
+    estimate_pole,
+)
 from gmid.amplifier.filtering.result import FilterSizing
 from gmid.amplifier.filtering.reviewing import review_filter
 from gmid.amplifier.filtering.sized import Sized
@@ -58,17 +64,11 @@ ROUNDS = 4
 RESERVE = 1.03
 """By which amplifiers are sized beyond a round's demands, so that the next does not undo them."""
 
-BUILT_SHARES = (0.1, 0.2, 0.4, 0.8)
-"""What may be built in at each output, over the integrating capacitor, to slow its loop down."""
-
-OWN_SHARES = (0.15, 0.05)
-"""Own capacitances of output and input, over gm_total/(2 pi) over the pole of usual mirrors [-];
-common practice."""
-
 _SETTLED = 0.01
 _NEAR = 0.06
 _QUIET = 0.85
 _DECIBELS = ("dc_gain", "common_mode_gain")
+_LEAST = ("input_noise", "common_mode_gain")
 _POLE_RESERVE = 1.02
 _LARGEST_GROWTH = 1.3
 _SQUEEZE = 0.97
@@ -165,13 +165,18 @@ class Loop:
         return self._finish(sized, k)
 
     def _is_worth_another(self, sized: Sized) -> bool:
-        """Tell whether a search may find more than the last one, which missed its demands."""
-        now = {name: one.value for name, one in self._unloaded().items()}
-        near = all(
-            abs(now[name] - value) <= _NEAR * max(abs(value), 1.0 if name in _DECIBELS else 0.0)
-            for name, value in sized.asked.items()
-        )
-        return sized.met or not near
+        """Tell whether a search may find more than the last one: not where that missed as much."""
+        if sized.met:
+            return True
+        eased = False
+        for name, one in self._unloaded().items():
+            before = sized.asked[name]
+            change = (one.value - before) / (1.0 if name in _DECIBELS else max(before, 1e-30))
+            harder = -change if name in _LEAST else change
+            if harder > _NEAR:
+                return False
+            eased = eased or harder < -_NEAR
+        return eased
 
     def _trim(self, sized: Sized) -> tuple[float, Sized]:
         """Use spare noise and other output capacitances where the tolerance is broken."""
@@ -329,11 +334,7 @@ class Loop:
         return self._resize(first, built)
 
     def _unloaded(self) -> dict[str, Requirement]:
-        """Ask for the gain without load.
-
-        With the filter's resistors at its output an amplifier of much gm_total has the gain with
-        any output conductance of its own, and that breaks the tolerance.
-        """
+        """Ask for the gain without load: loaded, much gm_total would hide a lossy output."""
         wanted = self.grouping.demands
         gain = max(one["intrinsic_gain"].value for one in self.found.demands)
         because = "the gain that its own output conductance leaves, without load"

@@ -17,6 +17,13 @@ MIRROR_GM_OVER_ID = 10.0
 MIRROR_LENGTH = 3.0
 """Length of mirrors over the least length of the table [-]; common practice."""
 
+BUILT_SHARES = (0.1, 0.2, 0.4, 0.8)
+"""What may be built in at each output, over the integrating capacitor, to slow its loop down."""
+
+OWN_SHARES = (0.15, 0.05)
+"""Own capacitances of output and input, over gm_total/(2 pi) over the pole of usual mirrors [-];
+common practice."""
+
 WHITE_NOISE_FACTOR = 7.0
 """Of mirror amplifiers, without flicker noise [-]; common practice."""
 

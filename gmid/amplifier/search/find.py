@@ -116,7 +116,7 @@ def find_plan(
     (True, 'gbw')
     """
     begun = time.perf_counter()
-    say = progress or (lambda share, words: None)
+    say = _keep_rising(progress or (lambda share, words: None))
     load = (load_capacitance, load_resistance)
     choices = choices or Choices()
     opened = tuple(bench)
@@ -140,6 +140,17 @@ def find_plan(
         plan, met, checks, binding, floor, largest / floor, suggestion,
         time.perf_counter() - begun,
     )  # fmt: skip
+
+
+def _keep_rising(progress: Progress) -> Progress:
+    """Never tell a share below one told before; a search may take a step again."""
+    told = [0.0]
+
+    def say(share: float, words: str) -> None:
+        told[0] = max(told[0], share)
+        progress(told[0], words)
+
+    return say
 
 
 def _judge(

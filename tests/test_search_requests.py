@@ -12,9 +12,7 @@ from gmid.request import read_request
 FOLDER = Path(__file__).parent / "requests"
 EXPECTED = tomllib.loads((FOLDER / "expected.toml").read_text())
 NAMES = sorted(
-    file.stem
-    for file in FOLDER.glob("*.toml")
-    if not file.stem.startswith(("expected", "filter_"))
+    file.stem for file in FOLDER.glob("*.toml") if not file.stem.startswith(("expected", "filter_"))
 )
 
 

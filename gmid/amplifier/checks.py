@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from gmid.amplifier.large import OVERDRIVE, output_currents
 from gmid.amplifier.plan import Choices, Matching, Requirement
 from gmid.amplifier.prediction import Prediction, predict
+from gmid.amplifier.signal import to_db
 from gmid.condition import Condition
 from gmid.errors import UnknownName, advise
 
@@ -100,6 +101,10 @@ KINDS = {
         Kind("input_noise", "V/rtHz", False, lambda p, r, m: _largest_noise(p, r)),
         Kind("slew_rate", "V/s", True, lambda p, r, m: p.slew_rate),
         Kind("gm_total", "S", True, lambda p, r, m: p.signal.gm_total),
+        Kind(
+            "intrinsic_gain", "dB", True,
+            lambda p, r, m: to_db(p.signal.gm_total / p.signal.output_conductance),
+        ),
         Kind("excess_pole", "Hz", True, lambda p, r, m: p.signal.excess_pole),
         Kind("output_current", "A", True, lambda p, r, m: _output_current(p)),
         Kind(

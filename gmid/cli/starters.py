@@ -72,7 +72,8 @@ up_to = "10 MHz"
 _SPELLED = {
     "dc_gain": '"60 dB"', "gbw": '"20 MHz"', "phase_margin": '"60 deg"', "swing": '"0.8 V"',
     "input_noise": '{ density = "40 nV/rtHz", at = "1 MHz" }', "slew_rate": '"20 V/us"',
-    "gm_total": '"300 uS"', "excess_pole": '"50 MHz"', "output_current": '"10 uA"',
+    "gm_total": '"300 uS"', "intrinsic_gain": '"50 dB"', "excess_pole": '"50 MHz"',
+    "output_current": '"10 uA"',
     "common_mode_gain": '"-6 dB"', "offset": '"5 mV"', "supply_current": '"100 uA"',
 }  # fmt: skip
 

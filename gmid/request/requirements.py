@@ -46,6 +46,7 @@ DEMANDS = {
         DemandKind("input_noise", "V/rtHz", "largest input noise density at a frequency"),
         DemandKind("slew_rate", "V/s", "least differential slew rate"),
         DemandKind("gm_total", "S", "least short-circuit transconductance"),
+        DemandKind("intrinsic_gain", "dB", "least gain that its own output conductance leaves"),
         DemandKind("excess_pole", "Hz", "least excess-phase pole"),
         DemandKind("output_current", "A", "least peak output current"),
         DemandKind("common_mode_gain", "dB", "largest common-mode gain from input to output"),
@@ -116,6 +117,7 @@ class DemandKeys(Model):
     input_noise: _reader("input_noise") = None  # type: ignore[valid-type]
     slew_rate: _reader("slew_rate") = None  # type: ignore[valid-type]
     gm_total: _reader("gm_total") = None  # type: ignore[valid-type]
+    intrinsic_gain: _reader("intrinsic_gain") = None  # type: ignore[valid-type]
     excess_pole: _reader("excess_pole") = None  # type: ignore[valid-type]
     output_current: _reader("output_current") = None  # type: ignore[valid-type]
     common_mode_gain: _reader("common_mode_gain") = None  # type: ignore[valid-type]

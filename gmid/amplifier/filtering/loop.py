@@ -67,7 +67,7 @@ RESERVE = 1.03
 _SETTLED = 0.01
 _NEAR = 0.06
 _QUIET = 0.85
-_DECIBELS = ("dc_gain", "common_mode_gain")
+_DECIBELS = ("dc_gain", "intrinsic_gain", "common_mode_gain")
 _LEAST = ("input_noise", "common_mode_gain")
 _POLE_RESERVE = 1.02
 _LARGEST_GROWTH = 1.3
@@ -169,7 +169,7 @@ class Loop:
         if sized.met:
             return True
         eased = False
-        for name, one in self._unloaded().items():
+        for name, one in self._asked().items():
             before = sized.asked[name]
             change = (one.value - before) / (1.0 if name in _DECIBELS else max(before, 1e-30))
             harder = -change if name in _LEAST else change
@@ -321,25 +321,27 @@ class Loop:
         built = self.built
         wanted = {
             name: replace(one, value=one.value * (RESERVE if name in _TIGHT else 1.0))
-            for name, one in self._unloaded().items()
+            for name, one in self._asked().items()
         }
         result = self.find(
             wanted, load_capacitance=self.grouping.load_capacitance + built,
-            load_resistance=float("inf"), bench=self.bench, roles=self.roles,
+            load_resistance=self._search_load, bench=self.bench, roles=self.roles,
             own_well=self.own_well, supply=self.supply, choices=self.choices,
             matching=self.matching,
         )  # fmt: skip
-        asked = {name: one.value for name, one in self._unloaded().items()}
+        asked = {name: one.value for name, one in self._asked().items()}
         first = Sized(result.plan, (), result.suggestion, result.floor, asked, result.met)
         return self._resize(first, built)
 
-    def _unloaded(self) -> dict[str, Requirement]:
-        """Ask for the gain without load: loaded, much gm_total would hide a lossy output."""
-        wanted = self.grouping.demands
-        gain = max(one["intrinsic_gain"].value for one in self.found.demands)
-        because = "the gain that its own output conductance leaves, without load"
-        value = 20 * float(np.log10(gain))
-        return {**wanted, "dc_gain": replace(wanted["dc_gain"], value=value, because=because)}
+    @property
+    def _search_load(self) -> float:
+        """Load of an amplifier alone; in gm-c loads are other transconductors [ohm]."""
+        return float("inf") if self.spec.style == "gm-c" else self.grouping.load_resistance
+
+    def _asked(self) -> dict[str, Requirement]:
+        """Ask for the intrinsic gain too: loaded, much gm_total would hide a lossy output."""
+        gain = 20 * np.log10(max(one["intrinsic_gain"].value for one in self.found.demands))
+        return {**self.grouping.demands, "intrinsic_gain": Requirement(float(gain))}
 
     def _resize(self, sized: Sized, built: float) -> Sized:
         """Take another output capacitance, which during a search is part of the load."""
@@ -348,9 +350,7 @@ class Loop:
             sized.base, load_capacitance=self.grouping.load_capacitance,
             load_resistance=self.grouping.load_resistance, output_capacitance=built,
         )  # fmt: skip
-        return Sized(
-            base, self._predict(base), sized.suggestion, sized.floor, sized.asked, sized.met
-        )  # fmt: skip
+        return replace(sized, base=base, predictions=self._predict(base))
 
     def _predict(self, plan: AmplifierPlan) -> tuple[Prediction, ...]:
         return tuple(predict(plan, devices, self.supply) for _, devices in self.bench)
@@ -363,7 +363,7 @@ class Loop:
                 return False
         alone = replace(
             sized.base, load_capacitance=self.grouping.load_capacitance,
-            load_resistance=float("inf"), demands=self._unloaded(),
+            load_resistance=self._search_load, demands=self._asked(),
         )  # fmt: skip
         checks = judge(self._predict(alone), self.choices, matching=self.matching)
         return all(check.met for check in checks)

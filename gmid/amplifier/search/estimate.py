@@ -257,14 +257,20 @@ def solve_current(
     if "output_current" in demands:
         needs.append(demands["output_current"].value / (2 * np.minimum(*found.ratios)))
     if "dc_gain" in demands:
-        gain = 10 ** (demands["dc_gain"].value / 20)
-        left = found.gm_total / gain - found.own_conductance
-        with np.errstate(divide="ignore", invalid="ignore"):
-            needs.append(np.where(left > 0, conductance / left, 0.0))
+        needs.append(_carry(found, demands["dc_gain"].value, conductance))
+    if "intrinsic_gain" in demands:
+        needs.append(_carry(found, demands["intrinsic_gain"].value, extra[1]))
     result = needs[0]
     for need in needs[1:]:
         result = np.maximum(result, need)
     return result
+
+
+def _carry(found: Estimate, gain_db: float, conductance: float) -> Array:
+    """Give the current with which a conductance beside their own leaves a gain [A]."""
+    left = found.gm_total / 10 ** (gain_db / 20) - found.own_conductance
+    with np.errstate(divide="ignore", invalid="ignore"):
+        return np.where(left > 0, conductance / left, 0.0)
 
 
 def measure_shortfall(
@@ -309,6 +315,9 @@ def measure_shortfall(
     if "dc_gain" in demands:
         gain = np.log(drive / conductance)
         missed = missed + np.maximum(0.0, demands["dc_gain"].value * _DECIBEL - gain)
+    if "intrinsic_gain" in demands:
+        gain = np.log(drive / (extra[1] + current * found.own_conductance))
+        missed = missed + np.maximum(0.0, demands["intrinsic_gain"].value * _DECIBEL - gain)
     if "swing" in demands:
         lack = demands["swing"].value + 2 * margin - found.swing
         missed = missed + 2.0 * np.maximum(0.0, lack)

@@ -128,6 +128,9 @@ def _list_demand(
         return Goal(name, lambda found: _ratio(read(found), value))
     others: dict[str, Callable[[Prediction], Array]] = {
         "dc_gain": lambda found: (found.signal.dc_gain_db - value) * _DECIBEL,
+        "intrinsic_gain": lambda found: (
+            (to_db(found.signal.gm_total / found.signal.output_conductance) - value) * _DECIBEL
+        ),
         "phase_margin": lambda found: (found.signal.phase_margin - value) * _RADIAN,
         "swing": lambda found: probe_swing(found, value, choices.saturation_margin),
         "input_noise": lambda found: _ratio(value, _noise(found, demand)),

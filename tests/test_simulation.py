@@ -35,7 +35,6 @@ MODEL = ".model nx nmos level=14 vth0=0.4 toxe=4n\n"
 
 @pytest.fixture
 def simulator() -> None:
-    pytest.importorskip("neospice")
 
 
 @pytest.mark.usefixtures("simulator")

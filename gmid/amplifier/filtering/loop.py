@@ -67,6 +67,7 @@ RESERVE = 1.03
 _SETTLED = 0.01
 _NEAR = 0.06
 _QUIET = 0.85
+_ROUNDED = 0.999  # of a transconductance that the elements are then fitted to
 _DECIBELS = ("dc_gain", "intrinsic_gain", "common_mode_gain")
 _LEAST = ("input_noise", "common_mode_gain")
 _POLE_RESERVE = 1.02
@@ -210,7 +211,7 @@ class Loop:
             return level_filter(self.found, plans, self.bench, self.supply, lower=lower)
         nominal = sized.at_nominal
         unit = float(np.asarray(nominal.gm_total))
-        self.least_share = float(np.min(np.asarray(sized.model.gm_total))) / unit
+        self.least_share = _ROUNDED * float(np.min(np.asarray(sized.model.gm_total))) / unit
         models = {name: nominal.scaled(m) for name, m in self.grouping.multiples.items()}
         made = fit_elements(self.found.realisation, self.grouping.multiples, unit, models=models)
         if self.spec.snr_db is None or self.spec.capacitor is not None:

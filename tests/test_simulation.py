@@ -33,11 +33,6 @@ RC = "rc\nv1 in 0 dc 1 ac 1 pulse(0 1 0 1p 1p 1 2)\nr1 in out 1k\nc1 out 0 1n\n"
 MODEL = ".model nx nmos level=14 vth0=0.4 toxe=4n\n"
 
 
-@pytest.fixture
-def simulator() -> None:
-
-
-@pytest.mark.usefixtures("simulator")
 class TestAnalyses:
     def test_operating_point_of_a_divider(self) -> None:
         result = run_deck("divider\nv1 in 0 2\nr1 in out 1k\nr2 out 0 3k\n.op\n.end\n")
@@ -81,7 +76,6 @@ class TestAnalyses:
         assert ratio == pytest.approx(6, rel=1e-6)
 
 
-@pytest.mark.usefixtures("simulator")
 class TestManners:
     def test_nothing_is_printed_or_left_behind(self, tmp_path, monkeypatch, capfd) -> None:
         monkeypatch.chdir(tmp_path)
@@ -107,7 +101,6 @@ class TestManners:
         np.testing.assert_allclose(found, np.full(8, 100.0), rtol=1e-9)
 
 
-@pytest.mark.usefixtures("simulator")
 class TestRefusals:
     @pytest.mark.parametrize("lines", ["", ".op\n.ac dec 1 1 10\n"])
     def test_one_analysis_a_deck(self, lines: str) -> None:

@@ -15,7 +15,7 @@ from gmid.amplifier.filtering.positions import make_model, measure_transconducta
 from gmid.amplifier.filtering.realised import RealisedFilter, realise_filter
 from gmid.amplifier.filtering.transconductors import choose_multiples, fit_elements
 from gmid.amplifier.plan import AmplifierPlan, Level, Supply
-from gmid.amplifier.prediction import predict
+from gmid.amplifier.predicting import predict
 from gmid.circuit import solve_bias
 from gmid.errors import DataFault, UnknownName
 from gmid.filters import AmplifierModel, FilterSpec, Passives, Realisation, realise

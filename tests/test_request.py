@@ -34,14 +34,19 @@ tolerance = "10 %"
 common_mode = "0.85 V"
 reference_current = "2 uA"
 """
-DEMANDED = BASE + """
+DEMANDED = (
+    BASE
+    + """
 [demands]
 dc_gain = "60 dB"
 gbw = "20 MHz"
 load_capacitance = "1 pF"
 input_noise = { density = "40 nV/rtHz", at = "1 MHz" }
 """
-FILTERED = BASE + """
+)
+FILTERED = (
+    BASE
+    + """
 [filter]
 response = "chebyshev"
 order = 5
@@ -60,6 +65,7 @@ smallest_length = { pair = "0.3 um" }
 [matching]
 nmos = { avt = "3.5 mV um", abeta = "1 % um" }
 """
+)
 
 
 def test_demands_and_supply_are_read():

@@ -186,7 +186,9 @@ def test_what_is_not_watched_does_not_count():
     space = make_space(even_counts=False)
     goals = list_goals({"gbw": Requirement(1e12)}, Choices(), {})
     watch = np.array([[goal.name != "gbw" for goal in goals]])
-    evaluator = Evaluator(space, make_bench(), example_supply(), goals, LOAD)
+    evaluator = Evaluator(
+        space, share_devices(make_bench(), LENGTHS), example_supply(), goals, LOAD
+    )
     seen = evaluator.evaluate(find_row(space), [Point(0, 1.8)], watch)
     blind = evaluator.evaluate(find_row(space), [Point(0, 1.8)])
     assert np.isinf(seen.margins[0, 0, -1])
@@ -200,7 +202,11 @@ def test_a_candidate_without_a_bias_point_is_far_behind_and_does_not_stop_the_ot
     broken[space.column["count.tail"]] = space.largest[space.column["count.tail"]]
     broken[space.column["count.load"]] = 0
     evaluator = Evaluator(
-        space, make_bench(), example_supply(), list_goals({}, Choices(), {}), LOAD
+        space,
+        share_devices(make_bench(), LENGTHS),
+        example_supply(),
+        list_goals({}, Choices(), {}),
+        LOAD,
     )
     outcome = evaluator.evaluate(np.stack([broken, row]), [Point(0, 1.8)])
     assert np.isfinite(outcome.area[1])
@@ -218,7 +224,7 @@ def test_cost_is_current_or_area_and_what_is_missed():
 def test_a_shared_device_is_the_device():
     device = example_devices()["nmos"]
     lengths, which = np.array([0.5e-6, 2e-6]), [0, 1]
-    own, shared = device.model(lengths), SharedDevice(device, LENGTHS).model(lengths)
+    own, shared = device.model(lengths), SharedDevice([device], LENGTHS).model(lengths)
     found, same = (
         one.current_and_derivatives([0.5, 0.6], 0.9, 0.1, which=which) for one in (own, shared)
     )

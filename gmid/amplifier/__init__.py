@@ -20,7 +20,8 @@ from gmid.amplifier.plan import (
     Supply,
     TransistorPlan,
 )
-from gmid.amplifier.prediction import Prediction, predict
+from gmid.amplifier.predicting import predict
+from gmid.amplifier.prediction import Prediction
 
 __all__ = [
     "PLACES",

@@ -14,7 +14,8 @@ from numpy.typing import NDArray
 
 from gmid.amplifier.large import OVERDRIVE, output_currents
 from gmid.amplifier.plan import Choices, Matching, Requirement
-from gmid.amplifier.prediction import Prediction, predict
+from gmid.amplifier.predicting import predict
+from gmid.amplifier.prediction import Prediction
 from gmid.amplifier.signal import to_db
 from gmid.condition import Condition
 from gmid.errors import UnknownName, advise
@@ -265,7 +266,8 @@ def judge(
     Parameters
     ----------
     predictions : sequence of Prediction
-        One a condition, all of the same plan, a single candidate at its supplies.
+        One a condition, or one of all conditions; of the same plan, a single candidate at its
+        supplies.
     choices : Choices
         Margins to keep.
     demands : mapping of str to Requirement, optional
@@ -289,7 +291,7 @@ def judge(
     plan = predictions[0].plan
     requirements = list_requirements(plan.demands if demands is None else demands, choices)
     worst: dict[str, tuple[float, float, str]] = {}
-    for found in predictions:
+    for found in dict.fromkeys(one.origin[0] if one.origin else one for one in predictions):
         for case in (found, *_at_reference_ends(found)):
             wanted = requirements if case is found else _only_bias(requirements)
             measured = measure_margins(
@@ -299,8 +301,7 @@ def judge(
                 index = int(np.argmin(margins))
                 margin = float(margins.ravel()[index])
                 if name not in worst or margin < worst[name][0]:
-                    where = spell_condition(found.condition, float(found.voltage.ravel()[index]))
-                    worst[name] = (margin, float(values.ravel()[index]), where)
+                    worst[name] = (margin, float(values.ravel()[index]), spell_item(case, index))
     return tuple(
         Check(
             name, wanted.value, worst[name][1], KINDS[name].unit, worst[name][2], worst[name][0],
@@ -333,6 +334,34 @@ def spell_condition(condition: Condition, voltage: float) -> str:
     return str(condition.with_supply(voltage))
 
 
+def spell_item(found: Prediction, index: int) -> str:
+    """Write condition and supply of an item of a prediction's batch.
+
+    Parameters
+    ----------
+    found : Prediction
+        In one condition or several.
+    index : int
+        Place on the flat batch.
+
+    Returns
+    -------
+    str
+        Such as ``ss/125/1.62``.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> spell_item(predict(example_plan(), example_devices(), example_supply()), 2)
+    'tt/27/1.98'
+    """
+    condition = found.bias.equations.condition_of(index)
+    assert condition is not None
+    return spell_condition(
+        condition, float(np.broadcast_to(found.voltage, found.batch).ravel()[index])
+    )
+
+
 def _only_bias(requirements: Mapping[str, Requirement]) -> dict[str, Requirement]:
     return {name: requirements[name] for name in BIAS_CHECKS if name in requirements}
 
@@ -342,10 +371,10 @@ def _at_reference_ends(found: Prediction) -> list[Prediction]:
     tolerance = found.supply.reference_tolerance
     if tolerance == 0:
         return []
+    ends = 1.0 + tolerance * np.array([-1.0, 1.0]).reshape(2, *(1,) * len(found.batch))
     return [
         predict(
             found.plan, found.devices, found.supply, voltage=found.voltage, start=found.bias,
-            reference_current=found.reference_current * (1 + sign * tolerance),
+            reference_current=found.reference_current * ends,
         )
-        for sign in (-1, 1)
     ]  # fmt: skip

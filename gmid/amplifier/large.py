@@ -145,7 +145,7 @@ def trace_curve(found: Prediction, input: Array) -> Curve:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> curve = trace_curve(found, np.array([0.0, 1e-3]))
     >>> bool(curve.output[1] > 0.05)
@@ -180,7 +180,7 @@ def measure_swing(found: Prediction, margin: float) -> Swing:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> bool(0.5 < measure_swing(found, 0.05).by_gain < 1.8)
     True
@@ -271,7 +271,7 @@ def measure_input_range(found: Prediction, margin: float) -> InputRange:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> span = measure_input_range(found, 0.0)
     >>> bool(span.low < 0.9 < span.high)
@@ -310,7 +310,7 @@ def measure_slew_rate(found: Prediction) -> Array:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> bool(5e6 < measure_slew_rate(found) < 50e6)
     True
@@ -338,7 +338,7 @@ def output_currents(found: Prediction, difference: ArrayLike) -> tuple[Array, Ar
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> out, into = output_currents(found, 0.4)
     >>> bool(10e-6 < out < 40e-6)
@@ -379,7 +379,7 @@ def measure_third_harmonic(found: Prediction, amplitude: ArrayLike) -> Array:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> bool(measure_third_harmonic(found, 0.2) < 0.05)
     True

@@ -142,7 +142,7 @@ def measure_offset(found: Prediction, matching: Mapping[str, Matching]) -> Offse
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> offset = measure_offset(found, {"nmos": Matching(3.5e-9), "pmos": Matching(3.5e-9)})
     >>> bool(1e-3 < offset.sigma < 10e-3)
@@ -197,7 +197,7 @@ def measure_rejection(found: Prediction, matching: Mapping[str, Matching]) -> Re
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> rules = {"nmos": Matching(3.5e-9), "pmos": Matching(3.5e-9)}
     >>> bool(20 < measure_rejection(found, rules).supply_rejection_db < 100)

@@ -9,6 +9,7 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -16,6 +17,9 @@ from numpy.typing import ArrayLike, NDArray
 from gmid.amplifier.places import Variant, list_places
 from gmid.amplifier.setting import Choices, Level, Matching, Supply
 from gmid.errors import DataFault, UnknownName, advise, raise_faults
+
+if TYPE_CHECKING:
+    from gmid.sweep.listing import DataFrame
 
 __all__ = [
     "BULKS",
@@ -262,6 +266,23 @@ class AmplifierPlan:
 
     def __repr__(self) -> str:
         return f"AmplifierPlan({self.name}: {self.variant}, {len(self.transistors)} places)"
+
+    def to_frame(self) -> DataFrame:
+        """List the transistors of one candidate as a data frame.
+
+        Returns
+        -------
+        DataFrame
+            Columns ``place device length count stack bulk``, SI; counts without `multiple`.
+        """
+        from gmid.amplifier.plan_listing import frame_plan
+
+        return frame_plan(self)
+
+    def _repr_html_(self) -> str:
+        from gmid.amplifier.plan_listing import list_plan
+
+        return list_plan(self)
 
 
 def _check_transistor(place: str, one: TransistorPlan) -> list[DataFault | UnknownName]:

@@ -5,9 +5,10 @@ Every figure is computed when it is read, so that a search pays only for what it
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
+from typing import Any, TypeVar
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -20,7 +21,9 @@ from gmid.amplifier.large import (
     measure_swing,
     measure_third_harmonic,
 )
+from gmid.amplifier.limits import Sensing, measure_sensing
 from gmid.amplifier.matching import Offset, Rejection, measure_offset, measure_rejection
+from gmid.amplifier.parting import take_condition
 from gmid.amplifier.plan import AmplifierPlan, Matching, Supply
 from gmid.amplifier.settling import measure_settling
 from gmid.amplifier.signal import (
@@ -32,16 +35,17 @@ from gmid.amplifier.signal import (
     measure_noise,
     measure_signal,
 )
-from gmid.amplifier.symmetry import HalfNetwork
-from gmid.amplifier.topology import NO_RESISTOR, PROBE, build_circuit
-from gmid.circuit.bias import Bias, solve_bias
+from gmid.amplifier.symmetry import SideNetwork
+from gmid.amplifier.topology import NO_RESISTOR, PROBE
+from gmid.circuit.bias import Bias
 from gmid.circuit.circuit import Circuit
 from gmid.condition import Condition
-from gmid.device.device import Device
+from gmid.device.circuit_device import CircuitDevice
 from gmid.errors import UnknownName, advise
 from gmid.network import Network, Noise
 
 Array = NDArray[np.float64]
+Value = TypeVar("Value")
 
 NOISE_FREQUENCIES = (1e3, 1e4, 1e5, 1e6, 1e7)
 """Where the input noise is reported [Hz]."""
@@ -55,20 +59,23 @@ class Prediction:
     ----------
     plan : AmplifierPlan
         What was predicted.
-    devices : mapping of str to Device
-        Of one condition.
+    devices : mapping of str to Device or JointDevice
+        Of one condition, or of several along the axes of the batch.
     supply : Supply
         What it is fed with.
     voltage : ndarray, shape (...)
         Supplies [V].
     reference_current : ndarray, shape (...)
         Reference current [A].
-    bias : Bias
-        The bias point of the bench, inputs balanced.
+    solved : Bias, optional
+        The bias point of the bench, inputs balanced; None where `origin` has it.
+    origin : tuple of Prediction and int, optional
+        A prediction in several conditions, and the place of this one on its first axis.
 
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply())
     >>> found
     Prediction(a1 in tt/27, supplies 1.62 to 1.98 V, batch (3,))
@@ -77,32 +84,86 @@ class Prediction:
     """
 
     plan: AmplifierPlan
-    devices: Mapping[str, Device]
+    devices: Mapping[str, CircuitDevice]
     supply: Supply
     voltage: Array
     reference_current: Array
-    bias: Bias
-    _swings: dict[float, Swing] = field(default_factory=dict, init=False, repr=False)
+    solved: Bias | None
+    origin: tuple[Prediction, int] | None = None
+    _kept: dict[tuple[Any, ...], Any] = field(default_factory=dict, init=False, repr=False)
+
+    def _keep(self, key: tuple[Any, ...], measure: Callable[[Prediction], Value]) -> Value:
+        """Measure something once, for all conditions together where it can be."""
+        if key not in self._kept:
+            if self.origin is None:
+                self._kept[key] = measure(self)
+            else:
+                whole, k = self.origin
+                self._kept[key] = take_condition(whole._keep(key, measure), k, len(whole.batch))
+        found: Value = self._kept[key]
+        return found
+
+    @cached_property
+    def bias(self) -> Bias:
+        """The bias point of the bench, inputs balanced."""
+        if self.origin is None:
+            assert self.solved is not None
+            return self.solved
+        whole, k = self.origin
+        return whole.bias.pick_condition(k, self.devices)
 
     @property
     def circuit(self) -> Circuit:
         """The bench: amplifier, sources, load."""
-        return self.bias.circuit
+        return self.bias.circuit if self.origin is None else self.origin[0].circuit
+
+    @property
+    def conditions(self) -> tuple[Condition, ...]:
+        """Corners and temperatures; one, unless the devices are in several."""
+        return next(iter(self.devices.values())).conditions
 
     @property
     def condition(self) -> Condition:
-        """Corner and temperature."""
-        return next(iter(self.devices.values())).condition
+        """Corner and temperature of a prediction in a single condition."""
+        (only,) = self.conditions
+        return only
 
     @property
     def batch(self) -> tuple[int, ...]:
-        """Leading axes: candidates, supplies."""
-        return self.circuit.batch
+        """Leading axes: candidates, conditions where there are several, supplies."""
+        return self.bias.batch if self.origin is None else self.origin[0].batch[1:]
 
-    @cached_property
+    def take_last(self, index: NDArray[np.intp]) -> Prediction:
+        """Give the prediction at some places on the last axis, that of supplies.
+
+        Parameters
+        ----------
+        index : ndarray of int, shape (k,)
+            The places.
+
+        Returns
+        -------
+        Prediction
+            Another one, from the same bias points.
+        """
+        size = self.batch[-1]
+
+        def take(values: Array) -> Array:
+            return values[..., index] if values.ndim and values.shape[-1] == size > 1 else values
+
+        devices = {
+            name: device.at_place(device.place[index]) if device.place.ndim else device
+            for name, device in self.devices.items()
+        }
+        return Prediction(
+            self.plan, devices, self.supply, take(self.voltage), take(self.reference_current),
+            self.bias.take_last(index, devices),
+        )  # fmt: skip
+
+    @property
     def node_voltages(self) -> dict[str, Array]:
         """Voltage of every node [V], those inside stacks included."""
-        return self.bias.voltages
+        return self._keep(("nodes",), lambda found: found.bias.voltages)
 
     @cached_property
     def network(self) -> Network:
@@ -110,35 +171,37 @@ class Prediction:
         return self.bias.linearise()
 
     @cached_property
-    def differential_half(self) -> HalfNetwork:
-        """The differential half of the bench, with a source between the outputs."""
-        network = self.bias.linearise(drives=("vip", "vin"))
-        network.add_current_source(INJECTION, "von", "vop")
-        return HalfNetwork(network, differential=True)
+    def differential_half(self) -> SideNetwork:
+        """What differential signals see of the bench, with a source between the outputs."""
+        half = SideNetwork(self.bias, ("vip", "vin"), differential=True)
+        half.add_across(INJECTION, "vop")
+        return half
 
     @cached_property
-    def common_half(self) -> HalfNetwork:
-        """The common half of the bench."""
+    def common_half(self) -> SideNetwork:
+        """What common signals see of the bench."""
         return self._take_common(("vip", "vin", "vdd", PROBE))
 
-    def _take_common(self, drives: tuple[str, ...]) -> HalfNetwork:
-        return HalfNetwork(self.bias.linearise(drives=drives, noise=False), differential=False)
+    def _take_common(self, drives: tuple[str, ...]) -> SideNetwork:
+        return SideNetwork(self.bias, drives, differential=False)
 
-    @cached_property
+    @property
     def signal(self) -> SignalPath:
         """The differential path."""
         conductance = 1.0 / np.minimum(self.plan.load_resistance, NO_RESISTOR)
         capacitance = np.asarray(self.plan.load_capacitance, dtype=np.float64)
-        return measure_signal(self.differential_half, conductance, capacitance)
+        return self._keep(("signal",), lambda found: measure_signal(
+            found.differential_half, conductance, capacitance
+        ))  # fmt: skip
 
-    @cached_property
+    @property
     def common_mode(self) -> CommonModeLoop:
         """The common-mode loop."""
-        return measure_common_mode(
-            self.common_half, self.settled_error, loop_network=self._take_common((PROBE,))
-        )
+        return self._keep(("common mode",), lambda found: measure_common_mode(
+            found.common_half, found.settled_error, loop_network=found.loop_half
+        ))  # fmt: skip
 
-    @cached_property
+    @property
     def loop_margin(self) -> Array:
         """Phase margin of the common-mode loop itself, which is what stability goes by [deg].
 
@@ -146,23 +209,21 @@ class Prediction:
         too good; here both a voltage and a current are injected.  The smaller of the margins
         with and without the load resistors, since in a filter those carry no common-mode current.
         """
-        network = self.bias.linearise(drives=(PROBE,), noise=False)
-        margins = []
-        for loaded in (True, False):
-            if not loaded:
-                network = network.with_values({"rlp": NO_RESISTOR, "rln": NO_RESISTOR})
-            half = HalfNetwork(network, differential=False)
-            margins.append(measure_margin(half, PROBE))
-        return np.minimum(*margins)
+        return self._keep(("loop margin",), lambda found: np.minimum(
+            measure_margin(found.loop_half, PROBE),
+            measure_margin(found.loop_half.with_values({"rlp": NO_RESISTOR}), PROBE),
+        ))  # fmt: skip
+
+    @cached_property
+    def loop_half(self) -> SideNetwork:
+        """What common signals see of the bench, with no source but the probe."""
+        return self._take_common((PROBE,))
 
     @property
     def settled_error(self) -> Array:
         """Output common mode less its reference [V]."""
-        return np.asarray(self._mean_output - self.bias.voltage("vcm"))
-
-    @property
-    def _mean_output(self) -> Array:
-        return 0.5 * (self.bias.voltage("vop") + self.bias.voltage("von"))
+        nodes = self.node_voltages
+        return np.asarray(0.5 * (nodes["vop"] + nodes["von"]) - nodes["vcm"])
 
     def noise(self, frequency: ArrayLike = NOISE_FREQUENCIES) -> Noise:
         """Give the noise of the bench, with the share of every device.
@@ -177,22 +238,27 @@ class Prediction:
         Noise
             `input_density` [V/sqrt(Hz)] is referred to the differential input.
         """
-        return measure_noise(self.differential_half, frequency)
+        f = tuple(np.ravel(np.asarray(frequency, dtype=np.float64)).tolist())
+        return self._keep(
+            ("noise", f), lambda found: measure_noise(found.differential_half, np.array(f))
+        )
 
-    @cached_property
+    @property
     def supply_current(self) -> Array:
         """Current drawn from the supply, the reference included [A]."""
-        return -np.asarray(self.bias.source_current("vdd"))
+        return self._keep(("supply",), lambda found: -np.asarray(found.bias.source_current("vdd")))
 
     @property
     def power(self) -> Array:
         """Power drawn from the supply [W]."""
         return np.asarray(self.voltage * self.supply_current)
 
-    @cached_property
+    @property
     def headroom(self) -> dict[str, Array]:
         """By instance, vds beyond the edge of saturation [V]; of a stack, its upper unit's."""
-        return {one.name: self.bias.headroom(one.name) for one in self.circuit.transistors}
+        return self._keep(("headroom",), lambda found: {
+            one.name: found.bias.headroom(one.name) for one in found.circuit.transistors
+        })  # fmt: skip
 
     @cached_property
     def saturation(self) -> Array:
@@ -217,7 +283,7 @@ class Prediction:
         names = [one.name for one in self.circuit.transistors]
         if name not in names:
             raise UnknownName(f"there is no instance {name}.", hint=advise(name, names))
-        return np.abs(self.bias.id(name))
+        return self._keep(("id", name), lambda found: np.abs(found.bias.id(name)))
 
     @cached_property
     def balance(self) -> Array:
@@ -235,15 +301,15 @@ class Prediction:
             total = total + width * one.length * one.count * one.stack
         return np.asarray(total)
 
-    @cached_property
+    @property
     def slew_rate(self) -> Array:
         """Slew rate of the differential output into the load [V/s]."""
-        return measure_slew_rate(self)
+        return self._keep(("slew",), measure_slew_rate)
 
-    @cached_property
+    @property
     def settling_time(self) -> Array:
         """Time in which a small step of the step bench settles to 1 % [s]."""
-        return measure_settling(self)
+        return self._keep(("settling",), measure_settling)
 
     def output_swing(self, margin: float = 0.05) -> Swing:
         """Measure how far the differential output goes.
@@ -258,9 +324,12 @@ class Prediction:
         Swing
             By gain and by saturation.
         """
-        if margin not in self._swings:
-            self._swings[margin] = measure_swing(self, margin)
-        return self._swings[margin]
+        return self._keep(("swing", margin), lambda found: measure_swing(found, margin))
+
+    @property
+    def sensing(self) -> Sensing:
+        """How far the outputs go apart until the common-mode loop no longer sees them rightly."""
+        return self._keep(("sensing",), measure_sensing)
 
     def input_range(self, margin: float = 0.05) -> InputRange:
         """Measure the input common-mode range.
@@ -275,7 +344,7 @@ class Prediction:
         InputRange
             Its ends.
         """
-        return measure_input_range(self, margin)
+        return self._keep(("input", margin), lambda found: measure_input_range(found, margin))
 
     def third_harmonic(self, amplitude: ArrayLike) -> Array:
         """Measure the static third harmonic of the open-loop bench.
@@ -305,7 +374,8 @@ class Prediction:
         Offset
             Its sigma, and the part of each place.
         """
-        return measure_offset(self, matching)
+        key = ("offset", *sorted(matching.items()))
+        return self._keep(key, lambda found: measure_offset(found, matching))
 
     def rejection(self, matching: Mapping[str, Matching]) -> Rejection:
         """Measure how far mismatch spoils the rejection of supply and input common mode.
@@ -320,62 +390,11 @@ class Prediction:
         Rejection
             At one sigma.
         """
-        return measure_rejection(self, matching)
+        key = ("rejection", *sorted(matching.items()))
+        return self._keep(key, lambda found: measure_rejection(found, matching))
 
     def __repr__(self) -> str:
         low, high = float(np.min(self.voltage)), float(np.max(self.voltage))
         span = f"supply {low:.4g} V" if low == high else f"supplies {low:.4g} to {high:.4g} V"
-        return f"Prediction({self.plan.name} in {self.condition}, {span}, batch {self.batch})"
-
-
-def predict(
-    plan: AmplifierPlan, devices: Mapping[str, Device], supply: Supply, *,
-    voltage: ArrayLike | None = None, reference_current: ArrayLike | None = None,
-    start: Bias | None = None,
-) -> Prediction:  # fmt: skip
-    """Solve the bias point of a plan in one condition; all figures follow from it.
-
-    Parameters
-    ----------
-    plan : AmplifierPlan
-        Its numbers may have leading axes, which broadcast with the supplies.
-    devices : mapping of str to Device
-        At least those of the plan, all of one condition.
-    supply : Supply
-        What it is fed with.
-    voltage : array_like, shape (...), optional
-        Supplies [V]; low, nominal and high by default, as the last axis.
-    reference_current : array_like, shape (...), optional
-        The nominal one by default [A].
-    start : Bias, optional
-        A solution nearby, to start from.
-
-    Returns
-    -------
-    Prediction
-        Figures are computed when read.
-
-    Raises
-    ------
-    NoSolution
-        If there is no bias point; the message names condition and node.
-    OutOfReach
-        If a length or the solution lies outside the table.
-    UnknownName
-        If a device is missing.
-
-    Examples
-    --------
-    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
-    >>> round(float(found.node_voltages["tail"]), 2)
-    0.4
-    """
-    levels = supply.voltages if voltage is None else np.asarray(voltage, dtype=np.float64)
-    current = supply.reference_current if reference_current is None else reference_current
-    circuit = build_circuit(
-        plan, voltage=levels, vcm=supply.common_mode.at(levels),
-        input_level=supply.input_level.at(levels), reference_current=current,
-    )  # fmt: skip
-    bias = solve_bias(circuit, devices, start=start).require()
-    return Prediction(plan, devices, supply, levels, np.asarray(current, dtype=np.float64), bias)
+        where = ", ".join(map(str, self.conditions))
+        return f"Prediction({self.plan.name} in {where}, {span}, batch {self.batch})"

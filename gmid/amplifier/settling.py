@@ -39,7 +39,7 @@ def build_step_network(found: Prediction) -> Network:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> "virtual_p" in build_step_network(found).nodes
     False
@@ -82,14 +82,14 @@ def measure_settling(found: Prediction, *, accuracy: float = 0.01) -> Array:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> bool(10e-9 < measure_settling(found) < 1e-6)
     True
     """
     network = build_step_network(found)
-    right, weights = network.drive(_DRIVE), network.observe(OUTPUT)[None]
-    (modes,) = expand_transfer(network.assemble(), right, weights)
+    right, weights = network.drive(_DRIVE)[:, None], network.observe(OUTPUT)[None]
+    modes = expand_transfer(network.assemble(), right, weights)
     gbw = np.broadcast_to(found.signal.gbw, found.batch)
     span = 100.0 / (2 * np.pi * gbw)
     time = span[..., None] * np.linspace(0.0, 1.0, _POINTS)
@@ -111,7 +111,7 @@ def _respond(modes: Modes, time: Array, slowest: Array) -> tuple[Array, Array]:
     transient = np.zeros(time.shape)
     final = np.zeros(time.shape[:-1])
     for k in range(modes.times.shape[-1]):
-        tau, residue = modes.times[..., k], modes.residues[..., k]
+        tau, residue = modes.times[..., k], modes.residues[..., k, 0, 0]
         fast = np.abs(tau) < slowest
         still = np.abs(tau) < 1e-18
         rate = np.where(still | ~fast, 1.0, -1.0 / np.where(still, 1.0, tau))

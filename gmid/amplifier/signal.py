@@ -68,7 +68,7 @@ class SignalPath:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply()).signal
     >>> bool((abs(found.gm_total * 1e6 - 400) < 100).all())
     True
@@ -109,7 +109,7 @@ class CommonModeLoop:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> loop = predict(example_plan(), example_devices(), example_supply()).common_mode
     >>> bool((abs(loop.settled_error) < 5e-3).all())
     True
@@ -204,7 +204,7 @@ def measure_signal(
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> predict(example_plan(), example_devices(), example_supply()).signal.gbw.shape
     (3,)
     """
@@ -249,7 +249,7 @@ def measure_common_mode(
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> predict(example_plan(), example_devices(), example_supply()).common_mode.gbw.shape
     (3,)
     """
@@ -299,8 +299,9 @@ def _find_peak(response: Transfer) -> Array:
     size = np.abs(response.scan(_PEAK_GRID))
     k = np.argmax(size, axis=-1)
     step = np.log(_PEAK_GRID[1] / _PEAK_GRID[0])
-    near = np.exp(np.linspace(-step, step, 13))
-    return np.asarray(np.abs(response(_PEAK_GRID[k][..., None] * near)).max(axis=-1))
+    near = _PEAK_GRID[k][..., None] * np.exp(np.linspace(-step, step, 13))
+    best = np.argmax(np.abs(response.scan(near)), axis=-1)[..., None]
+    return np.asarray(np.abs(response(np.take_along_axis(near, best, axis=-1)))[..., 0])
 
 
 def measure_noise(network: Structure, frequency: ArrayLike) -> Noise:
@@ -321,7 +322,7 @@ def measure_noise(network: Structure, frequency: ArrayLike) -> Noise:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply())
     >>> measure_noise(found.network, [1e6]).input_density.shape
     (3, 1)

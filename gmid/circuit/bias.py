@@ -19,7 +19,7 @@ from gmid.circuit.readings import Readings
 from gmid.circuit.symmetry import fold_circuit
 from gmid.circuit.trouble import refuse_failures
 from gmid.condition import Condition
-from gmid.device.device import Device
+from gmid.device.circuit_device import CircuitDevice
 from gmid.errors import UsageFault
 from gmid.network.network import Network
 
@@ -40,9 +40,12 @@ class Bias(Readings):
         Where Newton's method ended.
     fold : Fold, optional
         The two sides, where only one was solved.
+    joined : Bias, optional
+        That of the circuit with both sides joined, which was solved in place of the whole.
 
     Examples
     --------
+    >>> from gmid.device.device import Device
     >>> from gmid.device.example import example_sweep
     >>> c = Circuit()
     >>> c.add_current_source("iref", "0", "g", [1e-6, 4e-6])
@@ -53,9 +56,9 @@ class Bias(Readings):
     """
 
     @property
-    def condition(self) -> Condition | None:
-        """Corner and temperature; None for a circuit without transistors."""
-        return self.equations.condition
+    def conditions(self) -> tuple[Condition, ...]:
+        """Corners and temperatures of the devices; empty for a circuit without transistors."""
+        return self.equations.conditions
 
     @property
     def steps(self) -> NDArray[np.intp]:
@@ -88,7 +91,7 @@ class Bias(Readings):
         found: dict[str, Any] = {read.__name__: read(name) for read in rows}
         assert isinstance(transistor, Transistor)
         device = self.devices[transistor.device]
-        if "vdsat" in device.sweep:
+        if "vdsat" in device.fields:
             found |= {"vdsat": self.vdsat(name), "headroom": self.headroom(name)}
             found["region"] = np.where(found["headroom"] >= 0, "saturation", "triode")[()]
         return {
@@ -114,6 +117,63 @@ class Bias(Readings):
         """
         refuse_failures(self.equations, self.found, self._bias)
         return self
+
+    def pick_condition(self, k: int, devices: Mapping[str, CircuitDevice]) -> Bias:
+        """Give the part of a joint solution that belongs to one condition.
+
+        Parameters
+        ----------
+        k : int
+            Place on the first axis, which is that of the conditions.
+        devices : mapping of str to Device
+            The devices in that condition.
+
+        Returns
+        -------
+        Bias
+            Without the first axis.
+
+        Raises
+        ------
+        UsageFault
+            If the circuit's own values differ along the first axis.
+        """
+        rest = self.batch[1:]
+        if np.broadcast_shapes(self.circuit.batch, rest) != rest:
+            raise UsageFault("the circuit itself differs from one condition to the next.")
+        equations = Equations(self.circuit, devices, batch=rest)
+        joined = None
+        if isinstance(self.joined, Bias):
+            joined = self.joined.pick_condition(k, devices)
+        items = np.arange(self.equations.size).reshape(self.batch)[k].ravel()
+        return Bias(equations, self.found.take(items), self.fold, joined)
+
+    def take_last(self, index: NDArray[np.intp], devices: Mapping[str, CircuitDevice]) -> Bias:
+        """Give the bias of some places on the last axis of the batch.
+
+        Parameters
+        ----------
+        index : ndarray of int, shape (k,)
+            The places.
+        devices : mapping of str to Device or JointDevice
+            The same devices, for those places.
+
+        Returns
+        -------
+        Bias
+            What was read from this one already is not read again.
+        """
+        items = np.arange(self.equations.size).reshape(self.batch)[..., index].ravel()
+        joined = None
+        if isinstance(self.joined, Bias):
+            joined = self.joined.take_last(index, devices)
+        other = Bias(
+            self.equations.take_last(index, devices), self.found.take(items), self.fold, joined
+        )
+        for name in ("_everything", "_id", "_vdsat"):
+            if name in self.__dict__:
+                other.__dict__[name] = self.__dict__[name][:, items]
+        return other
 
     def linearise(
         self, pick: Any = None, *, drives: Sequence[str] | None = None, noise: bool = True
@@ -174,15 +234,33 @@ class Bias(Readings):
             self.equations, self.fold, self._small_signal, pick=pick, drives=drives, noise=noise
         )
 
+    def join_sides(self) -> Bias:
+        """Give the bias of the circuit with both sides joined, of a bias solved with `mirror`.
+
+        Returns
+        -------
+        Bias
+            Of `fold.circuit`. Its network is what signals see that are equal on both sides: what
+            is there twice has twice the admittance, and a source carries the current of both.
+
+        Raises
+        ------
+        UsageFault
+            If the bias was not solved with `mirror`.
+        """
+        if not isinstance(self.joined, Bias):
+            raise UsageFault("only two sides can be joined.", hint="Give mirror= to solve_bias.")
+        return self.joined
+
     def __repr__(self) -> str:
         good = int(self.found.converged.sum())
-        where = f" in {self.condition}" if self.condition else ""
+        where = f" in {', '.join(map(str, self.conditions))}" if self.conditions else ""
         return f"Bias({self.circuit!r}{where}; {good} of {self.equations.size} solved)"
 
 
 def solve_bias(
     circuit: Circuit,
-    devices: Mapping[str, Device],
+    devices: Mapping[str, CircuitDevice],
     *,
     start: Bias | Mapping[str, Array] | None = None,
     mirror: Mapping[str, str] | None = None,
@@ -193,8 +271,8 @@ def solve_bias(
     ----------
     circuit : Circuit
         Its values may have leading axes.
-    devices : mapping of str to Device
-        The devices that it uses, all in one condition.
+    devices : mapping of str to Device or JointDevice
+        The devices that it uses, all in one condition, or all in the same ones.
     start : Bias or mapping of str to ndarray, keyword-only
         Node voltages to begin from [V], such as those of a similar circuit; nodes that it lacks
         begin in the middle of the supply.
@@ -220,6 +298,7 @@ def solve_bias(
 
     Examples
     --------
+    >>> from gmid.device.device import Device
     >>> from gmid.device.example import example_sweep
     >>> c = Circuit()
     >>> c.add_voltage_source("vdd", "vdd", "0", 1.8)
@@ -239,7 +318,7 @@ def solve_bias(
     found = search(half, _place_start(half, given))
     rows = half.voltages(found.unknown)
     nodes = [half.index[fold.nodes[node]] for node in equations.potentials.names]
-    return Bias(equations, replace(found, unknown=rows[nodes]), fold)
+    return Bias(equations, replace(found, unknown=rows[nodes]), fold, Bias(half, found))
 
 
 def _place_start(equations: Equations, start: Mapping[str, Array] | None) -> Array | None:

@@ -6,71 +6,24 @@ items has length 1 there.
 
 from __future__ import annotations
 
+import copy
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import replace
 from functools import cached_property
-from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gmid.circuit.circuit import Circuit
 from gmid.circuit.elements import Element, Transistor
+from gmid.circuit.groups import Group, Indices, Number, group_units, settle_conditions, take
 from gmid.circuit.potentials import Potentials, find_potentials
 from gmid.circuit.scatter import Scatter, list_currents, list_slopes
 from gmid.condition import Condition
-from gmid.device.device import Device
-from gmid.device.model import DeviceModel
-from gmid.errors import NoSolution, UnknownName, UsageFault, advise
+from gmid.device.circuit_device import CircuitDevice
+from gmid.errors import NoSolution
 
 Array = NDArray[np.float64]
-Indices = NDArray[np.intp]
-Number = TypeVar("Number", bound=np.generic)
-
-
-@dataclass(frozen=True, eq=False)
-class Group:
-    """The units of one device.
-
-    Parameters
-    ----------
-    device : Device
-        The device.
-    model : DeviceModel
-        At all lengths in use.
-    units : ndarray of int, shape (k,)
-        Positions among the units of the circuit.
-    which : ndarray of int, shape (k, n)
-        Length of each among those of the model.
-    """
-
-    device: Device
-    model: DeviceModel
-    units: Indices
-    which: Indices
-
-
-def take(values: NDArray[Number], items: Indices | None) -> NDArray[Number]:
-    """Take some items of the batch.
-
-    Parameters
-    ----------
-    values : ndarray, shape (..., n) or (..., 1)
-        Values.
-    items : ndarray of int, or None
-        Items wanted; None for all.
-
-    Returns
-    -------
-    ndarray, shape (..., items) or (..., 1)
-        A value that is the same for all items stays as it is.
-
-    Examples
-    --------
-    >>> take(np.array([[1.0, 2.0]]), np.array([1])).tolist(), take(np.ones((2, 1)), None).shape
-    ([[2.0]], (2, 1))
-    """
-    return values if items is None or values.shape[-1] == 1 else values[..., items]
 
 
 class Equations:
@@ -80,10 +33,11 @@ class Equations:
     ----------
     circuit : Circuit
         The circuit.
-    devices : mapping of str to Device
-        At least those that the circuit uses, all in one condition.
+    devices : mapping of str to Device or JointDevice
+        At least those that the circuit uses, all in one condition, or all in the same ones.
     batch : tuple of int, optional, keyword-only
-        Leading axes, where there are more than those of the circuit's values.
+        Leading axes, where there are more than those of the circuit's values and of the
+        devices' places.
 
     Raises
     ------
@@ -106,11 +60,13 @@ class Equations:
     """
 
     def __init__(
-        self, circuit: Circuit, devices: Mapping[str, Device], *,
+        self, circuit: Circuit, devices: Mapping[str, CircuitDevice], *,
         batch: tuple[int, ...] | None = None,
     ) -> None:  # fmt: skip
         self.circuit = circuit
-        self.batch = circuit.batch if batch is None else batch
+        self.conditions, self.place = settle_conditions(circuit, devices)
+        own = np.broadcast_shapes(circuit.batch, self.place.shape)
+        self.batch = own if batch is None else batch
         self.size = int(np.prod(self.batch))
         self.potentials: Potentials = find_potentials(circuit)
         self.units: tuple[Transistor, ...] = tuple(
@@ -129,9 +85,57 @@ class Equations:
         self.forced = self._rows(circuit.current_sources, "current")
 
     @property
-    def condition(self) -> Condition | None:
-        """Corner and temperature of the devices; None without transistors."""
-        return self.groups[0].device.condition if self.groups else None
+    def temperature(self) -> Array:
+        """Temperature of the devices, of shape (...); 27 without any [degC]."""
+        if not self.conditions:
+            return np.array(27.0)
+        return np.array([one.temperature for one in self.conditions])[self.place]
+
+    def condition_of(self, item: int) -> Condition | None:
+        """Tell in which condition an item of the batch is.
+
+        Parameters
+        ----------
+        item : int
+            Place on the flat batch axis.
+
+        Returns
+        -------
+        Condition or None
+            None without transistors.
+        """
+        if not self.conditions:
+            return None
+        return self.conditions[int(np.broadcast_to(self.place, self.batch).ravel()[item])]
+
+    def take_last(self, index: Indices, devices: Mapping[str, CircuitDevice]) -> Equations:
+        """Give the equations of some places on the last axis of the batch.
+
+        Parameters
+        ----------
+        index : ndarray of int, shape (k,)
+            The places.
+        devices : mapping of str to Device or JointDevice
+            The same devices, for those places.
+
+        Returns
+        -------
+        Equations
+            Others; what is common to both is shared.
+        """
+        items = np.arange(self.size).reshape(self.batch)[..., index].ravel()
+        other = copy.copy(self)
+        other.circuit = self.circuit.take_last(index, self.batch[-1])
+        other.batch, other.size = (*self.batch[:-1], index.size), items.size
+        for name in ("count", "offset", "conductance", "forced"):
+            setattr(other, name, take(getattr(self, name), items))
+        other.groups = tuple(
+            replace(one, device=devices[one.device.name], which=take(one.which, items))
+            for one in self.groups
+        )
+        for group in other.groups:
+            other.place = group.device.place
+        return other
 
     @cached_property
     def rows(self) -> dict[str, tuple[int, int]]:
@@ -142,7 +146,7 @@ class Equations:
             first += transistor.stack
         return found
 
-    def flat(self, values: Array) -> Array:
+    def flat(self, values: NDArray[Number]) -> NDArray[Number]:
         """Lay leading axes out on the one batch axis.
 
         Parameters
@@ -166,33 +170,15 @@ class Equations:
         wide = max(row.size for row in rows)
         return np.stack([np.broadcast_to(row, wide) for row in rows])
 
-    def _group(self, devices: Mapping[str, Device]) -> Iterator[Group]:
-        """Check the devices and settle the lengths of each."""
-        conditions = {}
+    def _group(self, devices: Mapping[str, CircuitDevice]) -> Iterator[Group]:
+        """Check the polarities and settle the lengths of each device."""
         for name in self.circuit.devices:
-            if name not in devices:
-                users = [t.name for t in self.circuit.transistors if t.device == name]
-                raise UnknownName(
-                    f"{', '.join(users)}: there is no device {name}.", hint=advise(name, devices)
-                )
-            device = devices[name]
-            conditions[name] = device.condition
             members = [k for k, unit in enumerate(self.units) if unit.device == name]
-            for unit in (self.units[k] for k in members):
-                if unit.polarity != device.unit.polarity:
-                    raise UsageFault(
-                        f"{unit.name} is {unit.polarity}-channel, {name} is "
-                        f"{device.unit.polarity}-channel."
-                    )
-            lengths = self._rows([self.units[k] for k in members], "length")
-            used, which = np.unique(lengths, return_inverse=True)
-            yield Group(
-                device, device.model(used), np.array(members, dtype=np.intp),
-                np.asarray(which.reshape(lengths.shape), dtype=np.intp),
+            ours = [self.units[k] for k in members]
+            yield group_units(
+                devices[name], ours, np.array(members, dtype=np.intp),
+                self._rows(ours, "length"), self.flat(devices[name].place),
             )  # fmt: skip
-        if len(set(conditions.values())) > 1:
-            listed = ", ".join(f"{name} {held}" for name, held in conditions.items())
-            raise UsageFault(f"the devices are of different conditions: {listed}.")
 
     def _offsets(self) -> Array:
         values = {s.name: self.flat(s.voltage) for s in self.circuit.voltage_sources}

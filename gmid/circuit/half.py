@@ -13,12 +13,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gmid.circuit.elements import Element
-from gmid.circuit.equations import Equations, take
-from gmid.circuit.linearise import find_temperature
+from gmid.circuit.equations import Equations
+from gmid.circuit.groups import take
 from gmid.circuit.potentials import find_potentials
 from gmid.circuit.stacks import conductance_matrix
 from gmid.circuit.symmetry import Fold
-from gmid.device.model import SmallSignal
+from gmid.device.small_signal import SmallSignal
 from gmid.errors import UsageFault
 from gmid.network.network import Network
 from gmid.network.stamps import GROUND
@@ -108,7 +108,7 @@ class _Half:
     ) -> None:
         self.equations, self.places, self.items, self.shape = equations, places, items, shape
         self.noise = noise
-        self.temperature = find_temperature(equations) if noise else None
+        self.temperature = self._value(equations.temperature) if noise else None
         self.network = Network()
 
     def _value(self, array: Array) -> Array:

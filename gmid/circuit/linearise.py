@@ -8,10 +8,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.circuit.equations import Equations, Indices, take
+from gmid.circuit.equations import Equations
+from gmid.circuit.groups import Indices, take
 from gmid.circuit.potentials import find_potentials
 from gmid.circuit.stacks import conductance_matrix
-from gmid.device.model import SmallSignal
+from gmid.device.small_signal import SmallSignal
 from gmid.network.network import Network
 from gmid.network.stamps import GROUND
 
@@ -22,8 +23,6 @@ def evaluate_small_signal(
     equations: Equations,
     bias: tuple[Array, Array, Array],
     items: Indices | None = None,
-    *,
-    twins: Indices | None = None,
 ) -> SmallSignal:
     """Read the small-signal values of all units at their bias, counts included.
 
@@ -35,8 +34,6 @@ def evaluate_small_signal(
         vgs, vds and vsb of all units [V].
     items : ndarray of int, optional
         Batch items that the bias belongs to.
-    twins : ndarray of int, shape (k,), optional, keyword-only
-        For each unit one at the same bias, where there are such; only those are looked up.
 
     Returns
     -------
@@ -61,15 +58,12 @@ def evaluate_small_signal(
     flat = np.empty((5, *shape))
     matrix = np.empty((*shape, 4, 4))
     for group in equations.groups:
-        asked = group.units if twins is None else twins[group.units]
-        used, place = np.unique(asked, return_inverse=True)
-        vgs, vds, vsb = (part[used] for part in bias)
-        rows = np.searchsorted(group.units, used)
-        found = group.model.small_signal(vgs, vds, vsb, take(group.which[rows], items))
+        vgs, vds, vsb = (part[group.units] for part in bias)
+        found = group.model.small_signal(vgs, vds, vsb, take(group.which, items))
         parts = (found.gm, found.gds, found.gmb, found.noise_thermal, found.noise_flicker)
         for row, part in enumerate(parts):
-            flat[row, group.units] = part[place]
-        matrix[group.units] = found.capacitance[place]
+            flat[row, group.units] = part
+        matrix[group.units] = found.capacitance
     count = take(equations.count, items)
     flat *= count
     matrix *= count[..., None, None]
@@ -149,28 +143,6 @@ def build_network(
     return net
 
 
-def find_temperature(equations: Equations) -> float:
-    """Give the temperature of a circuit's resistors.
-
-    Parameters
-    ----------
-    equations : Equations
-        The circuit.
-
-    Returns
-    -------
-    float
-        That of the devices, or 27 without any [degC].
-
-    Examples
-    --------
-    >>> from gmid.circuit import Circuit
-    >>> find_temperature(Equations(Circuit(), {}))
-    27.0
-    """
-    return 27.0 if equations.condition is None else equations.condition.temperature
-
-
 def tuple_take(
     bias: tuple[Array, Array, Array], items: Indices | None
 ) -> tuple[Array, Array, Array]:
@@ -204,7 +176,7 @@ def _add_passives(
     value: Callable[[Array], Array],
     noise: bool,
 ) -> None:
-    temperature = find_temperature(equations) if noise else None
+    temperature = value(equations.temperature) if noise else None
     for resistor in equations.circuit.resistors:
         net.add_resistor(
             resistor.name, node[resistor.plus], node[resistor.minus], value(resistor.resistance),

@@ -7,7 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.circuit.equations import Equations, Indices
+from gmid.circuit.equations import Equations
+from gmid.circuit.groups import Indices
 
 Array = NDArray[np.float64]
 
@@ -45,6 +46,23 @@ class Search:
     converged: NDArray[np.bool_]
     steps: NDArray[np.intp]
     ramped: NDArray[np.bool_]
+
+    def take(self, items: Indices) -> Search:
+        """Take some items of the batch.
+
+        Parameters
+        ----------
+        items : ndarray of int, shape (k,)
+            Places on the flat batch.
+
+        Returns
+        -------
+        Search
+            Of those.
+        """
+        return Search(
+            self.unknown[:, items], self.converged[items], self.steps[items], self.ramped[items]
+        )
 
 
 def start_flat(equations: Equations) -> Array:

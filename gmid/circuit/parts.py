@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from typing import Self, TypeVar
+from dataclasses import replace
+from typing import Any, Self, TypeVar
 
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from gmid.circuit.elements import (
     Array,
@@ -216,6 +217,28 @@ class Parts:
         other._spelling = dict(self._spelling)
         return other
 
+    def take_last(self, index: NDArray[np.intp], size: int) -> Self:
+        """Give the circuit of some places on the last axis of its batch.
+
+        Parameters
+        ----------
+        index : ndarray of int, shape (k,)
+            The places.
+        size : int
+            Length of that axis; values of another length there are the same for all places.
+
+        Returns
+        -------
+        Circuit
+            Another one.
+        """
+        other = type(self)()
+        other.__dict__.update(self.__dict__, _batch=None)
+        other._elements = {
+            name: _take_last(element, index, size) for name, element in self._elements.items()
+        }
+        return other
+
     def with_values(self, values: Values) -> Self:
         """Return a circuit of the same structure with some values replaced.
 
@@ -359,3 +382,12 @@ class Parts:
         ]  # fmt: skip
         batch = f"; batch {self.batch}" if self.batch else ""
         return f"Circuit({len(self._nodes)} nodes: {', '.join(parts) or 'no elements'}{batch})"
+
+
+def _take_last(element: Element, index: NDArray[np.intp], size: int) -> Element:
+    parts: dict[str, Any] = {
+        key: value[..., index]
+        for key, value in element.values.items()
+        if value.ndim and value.shape[-1] == size > 1
+    }
+    return replace(element, **parts) if parts else element

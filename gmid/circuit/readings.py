@@ -11,13 +11,14 @@ from numpy.typing import NDArray
 from gmid.circuit.circuit import Circuit
 from gmid.circuit.elements import Transistor, VoltageSource
 from gmid.circuit.equations import Equations
+from gmid.circuit.groups import Indices
 from gmid.circuit.linearise import evaluate_small_signal
 from gmid.circuit.newton import Search
 from gmid.circuit.stacks import combine_stack
 from gmid.circuit.symmetry import Fold
-from gmid.circuit.trouble import check_reach, turn_upright
-from gmid.device.device import Device
-from gmid.device.model import SmallSignal
+from gmid.circuit.trouble import check_reach
+from gmid.device.circuit_device import CircuitDevice
+from gmid.device.small_signal import SmallSignal
 from gmid.errors import UnknownName, UsageFault, advise
 
 Array = NDArray[np.float64]
@@ -35,6 +36,8 @@ class Readings:
         Where Newton's method ended.
     fold : Fold, optional
         The two sides, where only one was solved.
+    joined : Readings, optional
+        Of the circuit with both sides joined, which was solved in place of the whole.
 
     Examples
     --------
@@ -50,6 +53,7 @@ class Readings:
     equations: Equations
     found: Search
     fold: Fold | None = None
+    joined: Readings | None = None
 
     @property
     def circuit(self) -> Circuit:
@@ -62,7 +66,7 @@ class Readings:
         return self.equations.batch
 
     @property
-    def devices(self) -> dict[str, Device]:
+    def devices(self) -> dict[str, CircuitDevice]:
         """Devices in use."""
         return {group.device.name: group.device for group in self.equations.groups}
 
@@ -87,29 +91,32 @@ class Readings:
 
     @cached_property
     def _id(self) -> Array:
+        if self._twins is not None and self.joined is not None:
+            rows, share = self._twins
+            return np.asarray(self.joined._id[rows] * share[:, None])
         return self.equations.currents(self._everything)[0]
 
     @cached_property
     def _small_signal(self) -> SmallSignal:
-        twins = None if self.fold is None else self.fold.find_twins(self.equations.rows)
-        return evaluate_small_signal(self.equations, self._bias, twins=twins)
+        if self._twins is not None and self.joined is not None:
+            return self.joined._small_signal.take(*self._twins)
+        return evaluate_small_signal(self.equations, self._bias)
+
+    @cached_property
+    def _twins(self) -> tuple[Indices, Array] | None:
+        """For each unit that of the joined circuit, and its share of that one's current."""
+        if self.fold is None or self.joined is None:
+            return None
+        return self.fold.find_twins(self.equations.rows, self.joined.equations.rows)
 
     @cached_property
     def _vdsat(self) -> Array:
+        if self._twins is not None and self.joined is not None:
+            return np.asarray(self.joined._vdsat[self._twins[0]])
         found = np.empty((len(self.equations.units), self.equations.size))
         for group in self.equations.groups:
-            sweep = group.device.sweep
-            if "vdsat" not in sweep:
-                raise UnknownName(f"{sweep.label} has no vdsat.", hint="Import it with vdsat.")
-            axes = (sweep.vgs, sweep.vds, sweep.vsb)
-            bias = [
-                np.clip(part[group.units], axis[0], axis[-1]).ravel()
-                for part, axis in zip(turn_upright(self._bias), axes, strict=True)
-            ]
-            shape = (group.units.size, self.equations.size)
-            length = np.broadcast_to(group.model.length[group.which], shape).ravel()
-            read = group.model.interpolant.quantities(["vdsat"], length, *bias)
-            found[group.units] = read["vdsat"].reshape(shape)
+            vgs, vds, vsb = (part[group.units] for part in self._bias)
+            found[group.units] = group.model.vdsat(vgs, vds, vsb, group.which)
         return found
 
     def _shown(self, values: Array) -> Array:

@@ -51,26 +51,32 @@ class Fold:
         """Nodes of the side that is kept, and those on the other."""
         return {kept: node for node, kept in self.nodes.items() if kept != node}
 
-    def find_twins(self, rows: Mapping[str, tuple[int, int]]) -> NDArray[np.intp]:
-        """Find for each unit of the whole circuit the one of the kept side.
+    def find_twins(
+        self, whole: Mapping[str, tuple[int, int]], joined: Mapping[str, tuple[int, int]]
+    ) -> tuple[NDArray[np.intp], NDArray[np.float64]]:
+        """Find for each unit of the whole circuit the one of the joined circuit.
 
         Parameters
         ----------
-        rows : mapping of str to tuple of int
-            First and last unit of each transistor.
+        whole, joined : mapping of str to tuple of int
+            First and last unit of each transistor of either circuit.
 
         Returns
         -------
-        ndarray of int, shape (k,)
-            Units.
+        rows : ndarray of int, shape (k,)
+            Units of the joined circuit.
+        share : ndarray of float, shape (k,)
+            Part of their current that a unit of the whole circuit carries [-].
         """
-        size = max((last for _, last in rows.values()), default=-1) + 1
-        twins = np.arange(size, dtype=np.intp)
-        for here, there in self.kept.items():
-            if here in rows:
-                (first, last), (other, _) = rows[here], rows[there]
-                twins[other : other + last - first + 1] = np.arange(first, last + 1)
-        return twins
+        kept = {there: here for here, there in self.kept.items()}
+        rows: list[int] = []
+        share: list[float] = []
+        for name, (first, last) in whole.items():
+            here = kept.get(name, name)
+            start = joined[here][0]
+            rows += range(start, start + last - first + 1)
+            share += [0.5 if here in self.kept else 1.0] * (last - first + 1)
+        return np.array(rows, dtype=np.intp), np.array(share)
 
     def __repr__(self) -> str:
         return f"Fold({len(set(self.nodes.values()))} of {len(self.nodes)} nodes)"

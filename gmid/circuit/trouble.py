@@ -7,7 +7,6 @@ from numpy.typing import NDArray
 
 from gmid.circuit.equations import Equations
 from gmid.circuit.newton import Search
-from gmid.device.model import EDGE
 from gmid.device.reach import settle_axes
 from gmid.errors import NoSolution, OutOfReach
 from gmid.quantity import format_quantity
@@ -40,12 +39,9 @@ def check_reach(equations: Equations, bias: tuple[Array, Array, Array]) -> NDArr
     (0, 1)
     """
     covered = np.ones(bias[0].shape, dtype=bool)
-    upright = turn_upright(bias)
     for group in equations.groups:
-        sweep = group.device.sweep
-        for values, axis in zip(upright, (sweep.vgs, sweep.vds, sweep.vsb), strict=True):
-            here = values[group.units]
-            covered[group.units] &= (here >= axis[0] - EDGE) & (here <= axis[-1] + EDGE)
+        vgs, vds, vsb = (part[group.units] for part in bias)
+        covered[group.units] = group.model.covers(vgs, vds, vsb, group.which)
     return covered
 
 
@@ -112,11 +108,11 @@ def refuse_failures(equations: Equations, found: Search, bias: tuple[Array, Arra
     for group in equations.groups:
         place = np.flatnonzero(group.units == row)
         if place.size:
-            which = group.which[place[0], item if group.which.shape[1] > 1 else 0]
+            where = int(group.which[place[0], item if group.which.shape[1] > 1 else 0])
+            model, which = group.model.part(where)
+            sweep, length = model.interpolant.grid.sweep, model.length[which : which + 1]
             try:
-                settle_axes(
-                    group.device.sweep, group.model.length[which : which + 1], vgs, vds, vsb
-                )
+                settle_axes(sweep, length, vgs, vds, vsb)
             except OutOfReach as error:
                 raise OutOfReach(
                     f"{equations.units[row].name}: {error.message}",
@@ -149,7 +145,8 @@ def describe_item(equations: Equations, item: int) -> str:
     >>> describe_item(Equations(c, {}), 1)
     'vdd = 1.8 V, item (1,)'
     """
-    parts = [] if equations.condition is None else [str(equations.condition)]
+    condition = equations.condition_of(item)
+    parts = [] if condition is None else [str(condition)]
     for source in equations.circuit.voltage_sources:
         flat = equations.flat(source.voltage)
         value = float(flat[item if flat.size > 1 else 0])

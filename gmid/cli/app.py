@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 from importlib import import_module
@@ -31,6 +32,10 @@ _COMMANDS = {
 """Module and function of each command, in the order in which they are listed."""
 
 
+WIDEST = 100
+"""Columns that a help text takes at most."""
+
+
 def build_app(first: str = "") -> typer.Typer:
     """Assemble the command line.
 
@@ -53,8 +58,9 @@ def build_app(first: str = "") -> typer.Typer:
     ['query']
     """
     app = typer.Typer(
-        help=HELP, rich_markup_mode=None, pretty_exceptions_enable=False, no_args_is_help=True
-    )
+        help=HELP, rich_markup_mode=None, pretty_exceptions_enable=False, no_args_is_help=True,
+        context_settings={"max_content_width": WIDEST},
+    )  # fmt: skip
     for name in [first] if first in _COMMANDS else _COMMANDS:
         module, function = _COMMANDS[name]
         app.command(name)(getattr(import_module(f"gmid.cli.{module}"), function))
@@ -74,6 +80,9 @@ def _keep_group() -> None:
 def main() -> None:
     """Run the command line; exit codes 0 done, 1 bad data, 2 usage, 3 missed, 130 interrupted.
 
+    A reader of the output that leaves early, such as ``head``, ends it silently with 141, as the
+    shell reports it of any command.
+
     Examples
     --------
     >>> import sys
@@ -83,17 +92,71 @@ def main() -> None:
     ...
     SystemExit: 1
     """
+    _open_closed_streams()
+    try:
+        code = _run()
+        sys.stdout.flush()
+        sys.stderr.flush()
+    except BrokenPipeError:
+        _drop_output()
+        code = LEFT
+    except OSError as trouble:
+        if trouble.filename is not None or trouble.errno not in _UNWRITTEN:
+            raise
+        _drop_output()
+        reason = os.strerror(trouble.errno).lower()
+        print_fault(GmidError(f"the output cannot be written: {reason}.", hint="Make room."))
+        code = 1
+    sys.exit(code)
+
+
+LEFT = 128 + 13
+"""Exit code where the reader of the output has left: that of a command ended by SIGPIPE."""
+
+_UNWRITTEN = (errno.ENOSPC, errno.EDQUOT, errno.EFBIG, errno.EIO)
+
+
+def _run() -> int:
+    """Run the command; return its exit code."""
     try:
         build_app(*sys.argv[1:2])(standalone_mode=True)
     except GmidError as fault:
         print_fault(fault)
-        sys.exit(2 if isinstance(fault, UsageFault) else 1)
+        return 2 if isinstance(fault, UsageFault) else 1
     except KeyboardInterrupt:
-        sys.stderr.write("\nInterrupted; nothing was written.\n")
-        sys.exit(130)
-    except BrokenPipeError:
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        sys.exit(0)
+        return _tell_interruption()
+    except SystemExit as stop:
+        if isinstance(stop.__context__, BrokenPipeError):  # which typer turns into code 1
+            raise stop.__context__ from None
+        return _tell_interruption() if stop.code == INTERRUPTED else int(stop.code or 0)
+    return 0
+
+
+INTERRUPTED = 130
+"""Exit code after Ctrl-C."""
+
+
+def _tell_interruption() -> int:
+    sys.stderr.write("\nInterrupted.\n")
+    return INTERRUPTED
+
+
+def _open_closed_streams() -> None:
+    """Give streams that the caller has closed a place where nobody reads them."""
+    for name in ("stdout", "stderr"):
+        if getattr(sys, name) is None:
+            setattr(sys, name, open(os.devnull, "w", encoding="utf-8"))  # noqa: SIM115
+
+
+def _drop_output() -> None:
+    """Let what is still to be flushed to stdout go nowhere, so that the end is silent."""
+    nowhere = os.open(os.devnull, os.O_WRONLY)
+    for stream in (sys.stdout, sys.stderr):
+        try:
+            stream.flush()
+        except OSError:
+            os.dup2(nowhere, stream.fileno())
+    os.close(nowhere)
 
 
 def print_fault(fault: GmidError) -> None:

@@ -13,7 +13,7 @@ if TYPE_CHECKING:
     from gmid.device.device import Device
     from gmid.device.opening import DeviceTable
 
-NUMBERS = "A value, a list a,b,c or a range start:stop:step, both ends in. "
+NUMBERS = "A value, a list a,b,c or a range start:stop:step, both ends in."
 """How the help of every numeric option begins."""
 
 _ALWAYS = ("length", "width", "count", "vgs", "vds", "vsb", "temperature")

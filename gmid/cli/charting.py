@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING, Annotated, Any, Literal
 import typer
 
 from gmid.cli.asking import NUMBERS, choose_devices, choose_quantities, read_numbers
-from gmid.cli.output import make_progress, say, write_csv, write_json
+from gmid.cli.completing import complete_axis, complete_device, complete_quantities
+from gmid.cli.output import choose_form, make_progress, say, write_csv, write_json
 from gmid.cli.question import Question, find_unreachable, raise_unreachable
 from gmid.errors import UsageFault
 
@@ -24,25 +25,52 @@ MOST_LENGTHS = 5
 def chart_command(
     table: Annotated[Path, typer.Argument(metavar="TABLE", help="A table file.")],
     devices: Annotated[
-        list[str], typer.Argument(metavar="DEVICE...", help="Devices of the table.")
+        list[str],
+        typer.Argument(
+            metavar="DEVICE...", help="Devices of the table.", autocompletion=complete_device
+        ),
     ],
-    output: Annotated[Path, typer.Option("-o", "--output", help="File: .svg, .pdf or .png.")],
-    length: Annotated[str, typer.Option(help=NUMBERS + "By default some of the table's.")] = "",
+    output: Annotated[
+        Path, typer.Option("-o", "--output", metavar="FILE", help="File: .svg, .pdf or .png.")
+    ],
+    length: Annotated[
+        str, typer.Option(metavar="VALUES", help=f"{NUMBERS} By default some of the table's.")
+    ] = "",
     vds: Annotated[
         str,
-        typer.Option(help="Drain-source voltages, or diode; half the table's range by default."),
+        typer.Option(
+            metavar="VALUES",
+            help="Drain-source voltages, or diode; half the table's range by default.",
+        ),
     ] = "",
-    vsb: Annotated[str, typer.Option(help="Source-bulk voltages, 0 by default.")] = "",
+    vsb: Annotated[
+        str, typer.Option(metavar="VALUES", help="Source-bulk voltages, 0 by default.")
+    ] = "",
     against: Annotated[
-        str, typer.Option(help="Horizontal axis: gm-over-id or vgs.")
+        str,
+        typer.Option(
+            metavar="AXIS", help="Horizontal axis: gm-over-id or vgs.", autocompletion=complete_axis
+        ),
     ] = "gm-over-id",
-    show: Annotated[str, typer.Option(help="Quantities, a panel each, such as ft,cgg.")] = "",
-    corner: Annotated[str, typer.Option(help="Corners, such as tt,ss; nominal by default.")] = "",
+    show: Annotated[
+        str,
+        typer.Option(
+            metavar="NAMES",
+            help="Quantities, a panel each, such as ft,cgg.",
+            autocompletion=complete_quantities,
+        ),
+    ] = "",
+    corner: Annotated[
+        str, typer.Option(metavar="NAMES", help="Corners, such as tt,ss; nominal by default.")
+    ] = "",
     temp: Annotated[
-        str, typer.Option(help="Temperatures, such as -40,27,125; nominal by default.")
+        str,
+        typer.Option(
+            metavar="VALUES", help="Temperatures, such as -40,27,125; nominal by default."
+        ),
     ] = "",
     condition: Annotated[
-        str, typer.Option(help="In place of both: such as tt/27,ss/125, or all.")
+        str, typer.Option(metavar="LIST", help="In place of both: such as tt/27,ss/125, or all.")
     ] = "",
     interpolate: Annotated[
         bool, typer.Option("--interpolate", help="Allow temperatures between those of the table.")
@@ -51,33 +79,36 @@ def chart_command(
     as_json: Annotated[bool, typer.Option("--json", help="Print the curves as JSON, SI.")] = False,
     as_csv: Annotated[bool, typer.Option("--csv", help="Print the curves as CSV, SI.")] = False,
 ) -> None:
-    """Draw curves of devices over gm/Id or vgs: one panel a quantity, one curve a combination.
+    """Draw the usual curves of devices.
 
-    What grows with the width is divided by it.
+    Over gm/Id or vgs, one panel a quantity, one curve a combination of the values given. What
+    grows with the width is divided by it.
 
-    Example: gmid chart larch180.h5 nmos -o nmos.svg --length 0.18u,0.5u,1u --vds 0.6
+    Example: gmid chart larch180.h5 nmos -o nmos.svg --length 0.18u,1u
     """
     from gmid.device.opening import open_table
+    from gmid.files.whole import writing
 
     kind, axis = _read_kind(output), _read_axis(against)
     given = read_numbers({
         "--length": (length, "m"), "--vds": ("" if vds == "diode" else vds, "V"),
         "--vsb": (vsb, "V"),
     })  # fmt: skip
-    if as_json and as_csv:
-        raise UsageFault("--json and --csv exclude each other.", hint="Give one.")
-    opened = choose_devices(
-        open_table(table), devices,
-        corner=corner, temp=temp, condition=condition, interpolate=interpolate,
-    )  # fmt: skip
-    lengths = given.get("--length") or _default_lengths(opened[0])
-    drains: list[float] | None = None
-    if vds != "diode":
-        drains = given.get("--vds") or _default_drain(opened)
-    if not vsb:
-        say("vsb = 0 V by default.")
-    curves = _trace(opened, lengths, drains, given.get("--vsb", [0.0]), _panels(opened, show, axis))
-    _write(output, kind, curves, axis, _panels(opened, show, axis), force=force)
+    choose_form(as_json=as_json, as_csv=as_csv)
+    with writing(output, force=force) as part:  # refuses an existing file before the work
+        opened = choose_devices(
+            open_table(table), devices,
+            corner=corner, temp=temp, condition=condition, interpolate=interpolate,
+        )  # fmt: skip
+        panels = _panels(opened, show, axis)
+        lengths = given.get("--length") or _default_lengths(opened[0])
+        drains: list[float] | None = None
+        if vds != "diode":
+            drains = given.get("--vds") or _default_drain(opened)
+        if not vsb:
+            say("vsb = 0 V by default.")
+        curves = _trace(opened, lengths, drains, given.get("--vsb", [0.0]), panels)
+        part.write_bytes(_draw(kind, curves, axis, panels))
     if as_json:
         write_json({
             "format": 1, "file": str(output), "against": axis,
@@ -172,17 +203,12 @@ def _trace(
     return curves
 
 
-def _write(
-    output: Path, kind: str, curves: Sequence[Curve], against: str, quantities: Sequence[str],
-    *, force: bool,
-) -> None:  # fmt: skip
-    from gmid.files.whole import writing
+def _draw(kind: str, curves: Sequence[Curve], against: str, quantities: Sequence[str]) -> bytes:
     from gmid.sheet.charts import draw_chart
     from gmid.sheet.figures import drawing, save_figure
 
-    with writing(output, force=force) as part, drawing():
-        figure = draw_chart(curves, against=against, quantities=quantities)
-        part.write_bytes(save_figure(figure, kind))
+    with drawing():
+        return save_figure(draw_chart(curves, against=against, quantities=quantities), kind)
 
 
 def _describe(curve: Curve) -> dict[str, Any]:

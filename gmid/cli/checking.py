@@ -9,14 +9,14 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from gmid.cli.output import make_progress, write_csv, write_json
+from gmid.cli.output import choose_form, make_progress, write_csv, write_json
 
 if TYPE_CHECKING:
     from gmid.sheet.data import Sheet
 
 
 def check_command(
-    plan: Annotated[Path, typer.Argument(help="A plan file, such as size writes.")],
+    plan: Annotated[Path, typer.Argument(metavar="PLAN", help="A plan file, such as size writes.")],
     full: Annotated[
         bool, typer.Option("--full", help="Everything: all conditions, noise shares, elements.")
     ] = False,
@@ -32,17 +32,39 @@ def check_command(
     """
     from gmid.tasks.checking import check
 
+    choose_form(as_json=as_json, as_csv=as_csv)
     found = check(plan, progress=make_progress())
-    if as_json:
-        write_json(found.sheet.to_json())
-    elif as_csv:
-        from gmid.sheet.data import to_plain
-
-        write_csv([{"of": part, **to_plain(one)} for part, one in found.sheet.checks])
-    else:
-        write_screen(found.sheet, full=full)
+    write_checked(found.sheet, full=full, as_json=as_json, as_csv=as_csv)
     if not found.is_met:
         sys.exit(3)
+
+
+def write_checked(sheet: Sheet, *, full: bool, as_json: bool, as_csv: bool) -> None:
+    """Print a sheet as it was asked for.
+
+    Parameters
+    ----------
+    sheet : Sheet
+        What to print.
+    full : bool
+        On a screen, the whole of it.
+    as_json, as_csv : bool
+        All of it as JSON, or its checks as CSV.
+
+    Examples
+    --------
+    >>> from gmid.sheet.data import Sheet
+    >>> sheet = Sheet(title="T", amplifiers=())
+    >>> write_checked(sheet, full=False, as_json=False, as_csv=True)
+    """
+    from gmid.sheet.data import to_plain
+
+    if as_json:
+        write_json(sheet.to_json())
+    elif as_csv:
+        write_csv([{"of": part, **to_plain(one)} for part, one in sheet.checks])
+    else:
+        write_screen(sheet, full=full)
 
 
 def write_screen(sheet: Sheet, *, full: bool) -> None:

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from gmid.cli.output import write_csv, write_json
+from gmid.cli.output import choose_form, write_csv, write_json
 
 if TYPE_CHECKING:
     from gmid.filters.demand_types import FilterDemands
@@ -18,10 +18,14 @@ if TYPE_CHECKING:
 
 
 def filter_command(
-    request: Annotated[Path, typer.Argument(help="A request file with a [filter].")],
+    request: Annotated[
+        Path, typer.Argument(metavar="REQUEST", help="A request file with a [filter].")
+    ],
     figure: Annotated[
         Path | None,
-        typer.Option("-o", "--output", help="Directory for the figures; none by default."),
+        typer.Option(
+            "-o", "--output", metavar="DIR", help="Directory for the figures; none by default."
+        ),
     ] = None,
     full: Annotated[
         bool, typer.Option("--full", help="Every demand of every amplifier with its reason.")
@@ -30,7 +34,7 @@ def filter_command(
     as_json: Annotated[bool, typer.Option("--json", help="Print as JSON, SI.")] = False,
     as_csv: Annotated[bool, typer.Option("--csv", help="Print the demands as CSV, SI.")] = False,
 ) -> None:
-    """Say what a filter is made of and what its amplifiers must meet.
+    """Say what a filter asks of its amplifiers.
 
     Sections, element values, and for each amplifier the demands, each with the bound that sets
     it. No table is needed.
@@ -42,6 +46,7 @@ def filter_command(
     from gmid.sheet.filters import fill_filter, list_demands
     from gmid.tasks.demanding import demands
 
+    choose_form(as_json=as_json, as_csv=as_csv)
     asked = read_request(request)
     found = demands(asked)
     if figure is not None:

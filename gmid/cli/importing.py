@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, Any
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from gmid.cli.auditing import audit_rows, merge_notes, write_import_figures
 from gmid.cli.output import make_progress, say, write_columns, write_csv, write_json
-from gmid.errors import UsageFault
+from gmid.errors import GmidError, UsageFault, raise_faults
 
 if TYPE_CHECKING:
+    from gmid.sweep.coverage import Trail
     from gmid.sweep.model import Sweep
     from gmid.sweep.recipe import Recipe
 
@@ -37,19 +39,26 @@ def import_command(
     compact: Annotated[
         bool, typer.Option("--compact", help="Store 32-bit compressed numbers (rounding 6e-8).")
     ] = False,
+    figures: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="DIR",
+            help="Also draw gm against the slope of the current, and maps of missing points, "
+            "even where the import fails.",
+        ),
+    ] = None,
     force: Annotated[
-        bool, typer.Option("--force", help="Replace a device and condition already there.")
+        bool, typer.Option("--force", help="Replace a device and condition, or figures, there.")
     ] = False,
     as_json: Annotated[bool, typer.Option("--json", help="Print the audit as JSON.")] = False,
     as_csv: Annotated[bool, typer.Option("--csv", help="Print the audit as CSV.")] = False,
 ) -> None:
     """Turn sweeps into a table.
 
-    Read, check, grid and store them; print the audit. Nothing is written where anything is wrong.
+    Read, check, grid and store them; print the audit. No table is written where anything is wrong.
 
     Example: gmid import larch180.toml -o larch180.h5
     """
-    from gmid.sweep.importing import import_recipe
     from gmid.table.saving import save_sweeps
 
     direct = {
@@ -68,9 +77,7 @@ def import_command(
             f"the recipes are of different processes: {', '.join(names)}.",
             hint="Import them into tables of their own.",
         )
-    sweeps: list[Sweep] = []
-    for recipe in loaded:
-        sweeps += import_recipe(recipe, progress=make_progress())
+    sweeps = _import_all(loaded, figures, force=force)
     table = save_sweeps(
         output, sweeps, process=names[0], replace=force, compact=compact, waiting=say
     )
@@ -88,52 +95,39 @@ def import_command(
     elif as_csv:
         write_csv(rows)
     else:
-        shown = _merge(rows)
+        shown = merge_notes(rows)
         write_columns(list(shown[0]), [list(row.values()) for row in shown])
         say(f"{output}: {len(sweeps)} sweep(s) stored, {len(table.entries)} in the table.")
 
 
-def audit_rows(sweeps: list[Sweep]) -> list[dict[str, Any]]:
-    """List the audit of sweeps, one row a note.
+def _import_all(recipes: list[Recipe], figures: Path | None, *, force: bool) -> list[Sweep]:
+    """Read and check the sweeps; draw the figures of what was found, faulty or not."""
+    from gmid.sweep.coverage import Trail
+    from gmid.sweep.importing import import_recipe
 
-    Parameters
-    ----------
-    sweeps : list of Sweep
-        With their provenance.
-
-    Returns
-    -------
-    list of dict
-        With ``device corner temperature level note``.
-
-    Examples
-    --------
-    >>> audit_rows([])
-    []
-    """
-    return [
-        {
-            "device": sweep.device,
-            "corner": sweep.condition.corner,
-            "temperature": sweep.condition.temperature,
-            "level": level,
-            "note": text,
-        }
-        for sweep in sweeps
-        for level, text in sweep.provenance["audit"]
-    ]
+    trail = Trail()
+    sweeps: list[Sweep] = []
+    try:
+        for recipe in recipes:
+            sweeps += import_recipe(recipe, progress=make_progress(), trail=trail)
+    except GmidError as fault:
+        if figures is not None:
+            _draw_beside(fault, figures, trail, force=force)
+        raise
+    if figures is not None:
+        write_import_figures(figures, trail.sweeps, trail.coverages, force=force)
+    return sweeps
 
 
-def _merge(rows: list[dict[str, Any]]) -> list[dict[str, str]]:
-    """Tell a note that many conditions share once."""
-    shared: dict[tuple[str, str, str], list[str]] = {}
-    for row in rows:
-        where = f"{row['corner']}/{row['temperature']:g}"
-        shared.setdefault((row["device"], row["level"], row["note"]), []).append(where)
-    return [
-        {"device": device, "conditions": " ".join(where), "audit": level, "note": note}
-        for (device, level, note), where in shared.items()
-    ]
+def _draw_beside(fault: GmidError, figures: Path, trail: Trail, *, force: bool) -> None:
+    """Draw what a failed import came to; where that fails too, both are told."""
+    if not trail.coverages:
+        say(f"{figures}: no figure, for the import did not come as far as a grid.")
+        return
+    try:
+        write_import_figures(figures, trail.sweeps, trail.coverages, force=force)
+    except GmidError as trouble:
+        raise_faults([fault, trouble])
 
 
 def _load_recipes(paths: list[Path], direct: dict[str, str], fingers: int) -> list[Recipe]:

@@ -26,7 +26,9 @@ def inspect_command(
     force: Annotated[bool, typer.Option("--force", help="Overwrite the recipe.")] = False,
     as_json: Annotated[bool, typer.Option("--json", help="Print as JSON.")] = False,
 ) -> None:
-    """Recognise sweep files: layout, tables, columns, ranges, guessed roles.
+    """Recognise sweep files.
+
+    Tells layout, tables, columns, ranges and guessed roles of each.
 
     Example: gmid inspect nmos.raw --recipe nmos.toml
     """

@@ -7,13 +7,16 @@ from typing import Annotated
 
 import typer
 
-from gmid.cli.output import say
+from gmid.cli.output import say, write_json
 
 
 def netlist_command(
-    plan: Annotated[Path, typer.Argument(help="A plan file, such as size writes.")],
-    output: Annotated[Path, typer.Option("-o", "--output", help="Directory to write to.")],
+    plan: Annotated[Path, typer.Argument(metavar="PLAN", help="A plan file, such as size writes.")],
+    output: Annotated[
+        Path, typer.Option("-o", "--output", metavar="DIR", help="Directory to write to.")
+    ],
     force: Annotated[bool, typer.Option("--force", help="Replace existing files.")] = False,
+    as_json: Annotated[bool, typer.Option("--json", help="Print the files as JSON.")] = False,
 ) -> None:
     """Write subcircuit and test benches of a plan.
 
@@ -28,4 +31,6 @@ def netlist_command(
     files = netlists(plan)
     make_directory(output)
     write_together({output / name: text for name, text in files.items()}, force=force)
+    if as_json:
+        write_json({"format": 1, "directory": str(output), "files": sorted(files)})
     say(f"{output}: {', '.join(sorted(files))}.")

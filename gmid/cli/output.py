@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 import json
-import math
 import shutil
 import sys
 import time
 from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
-_PREFIXED = ("A", "S", "F", "Hz")
-_CUSTOMARY = {"m": ("um", -6), "A/m": ("uA/um", 0), "degC": ("C", 0)}
+from gmid.errors import UsageFault
+from gmid.sweep.listing import is_number
+
 _GAP = 3
 """Columns between two cells on a terminal."""
 
@@ -30,6 +30,30 @@ def say(text: str) -> None:
     """
     sys.stdout.flush()
     sys.stderr.write(f"{text}\n")
+
+
+def choose_form(*, as_json: bool, as_csv: bool) -> None:
+    """Refuse two forms of output at once.
+
+    Parameters
+    ----------
+    as_json, as_csv : bool, keyword-only
+        What was asked for.
+
+    Raises
+    ------
+    UsageFault
+        If both were.
+
+    Examples
+    --------
+    >>> choose_form(as_json=True, as_csv=True)
+    Traceback (most recent call last):
+    ...
+    gmid.errors.UsageFault: --json and --csv exclude each other. Give one.
+    """
+    if as_json and as_csv:
+        raise UsageFault("--json and --csv exclude each other.", hint="Give one.")
 
 
 def write_json(data: Any) -> None:
@@ -121,53 +145,6 @@ def _split_columns(
     return blocks or [list(keys)]
 
 
-def format_column(name: str, values: Sequence[Any], *, digits: int = 4) -> tuple[str, list[str]]:
-    """Write the values of one quantity with one prefix for all.
-
-    Parameters
-    ----------
-    name : str
-        Of the nomenclature.
-    values : sequence of float or None
-        In SI; what is missing or not finite becomes ``-``.
-    digits : int, keyword-only
-        Significant digits.
-
-    Returns
-    -------
-    head : str
-        Symbol and unit with prefix.
-    cells : list of str
-        One for each value.
-
-    Examples
-    --------
-    >>> format_column("id", [1e-6, 12.3456e-6])
-    ('ID [uA]', ['1', '12.35'])
-    >>> format_column("current_density", [0.5])
-    ('ID/W [uA/um]', ['0.5'])
-    """
-    from gmid.nomenclature import QUANTITIES
-    from gmid.quantity import choose_prefix
-
-    quantity = QUANTITIES[name]
-    unit, power = _CUSTOMARY.get(quantity.unit, (quantity.unit, 0))
-    if quantity.unit in _PREFIXED:
-        prefix, power = choose_prefix(values)
-        unit = prefix + unit
-    head = f"{quantity.symbol} [{unit}]" if unit else quantity.symbol
-    return head, [_plain(value, power, digits) for value in values]
-
-
-def _plain(value: float | None, power: int, digits: int) -> str:
-    """Write a number without exponent where that stays short."""
-    if value is None or not math.isfinite(value):
-        return "-"
-    text = f"{value / 10.0**power:.{digits}g}"
-    plain = f"{float(text):.0f}" if "e+" in text else text
-    return plain if len(plain) <= digits + 4 else text
-
-
 def write_columns(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
     """Write aligned columns to stdout: drawn on a terminal, plain when piped.
 
@@ -186,7 +163,7 @@ def write_columns(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
     """
     cells = [list(heads), *[list(row) for row in rows]]
     widths = [max(len(row[i]) for row in cells) for i in range(len(heads))]
-    right = [bool(rows) and all(_numeric(row[i]) for row in rows) for i in range(len(heads))]
+    right = [bool(rows) and all(is_number(row[i]) for row in rows) for i in range(len(heads))]
     if sys.stdout.isatty():
         _draw(heads, rows, right)
         return
@@ -196,14 +173,6 @@ def write_columns(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
             for cell, width, flush in zip(row, widths, right, strict=True)
         )
         sys.stdout.write(line.rstrip() + "\n")
-
-
-def _numeric(text: str) -> bool:
-    try:
-        float(text)
-    except ValueError:
-        return text in ("", "-")
-    return True
 
 
 def _draw(heads: Sequence[str], rows: Sequence[Sequence[str]], right: Sequence[bool]) -> None:

@@ -10,8 +10,9 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 
 from gmid.cli.asking import NUMBERS, choose_devices, choose_quantities, read_numbers
+from gmid.cli.completing import complete_device, complete_quantities
 from gmid.cli.output import (
-    format_column,
+    choose_form,
     say,
     write_blocks,
     write_columns,
@@ -20,6 +21,7 @@ from gmid.cli.output import (
 )
 from gmid.cli.question import find_unreachable, make_question, raise_unreachable
 from gmid.errors import OutOfReach, UsageFault
+from gmid.sweep.listing import format_column
 
 if TYPE_CHECKING:
     from gmid.cli.question import Question
@@ -41,48 +43,82 @@ _UNITS = {
 
 def query_command(
     table: Annotated[Path, typer.Argument(metavar="TABLE", help="A table file.")],
-    device: Annotated[str, typer.Argument(metavar="DEVICE", help="A device of the table.")],
-    length: Annotated[str, typer.Option(help="Channel lengths, such as 0.18u,0.5u. " + NUMBERS)],
-    vds: Annotated[
-        str, typer.Option(help="Drain-source voltages, or diode for vds = vgs; magnitudes for p.")
+    device: Annotated[
+        str,
+        typer.Argument(
+            metavar="DEVICE", help="A device of the table.", autocompletion=complete_device
+        ),
     ],
-    gm_over_id: Annotated[str, typer.Option(help=_DRIVE + "gm/Id, such as 5:25:5.")] = "",
-    vgs: Annotated[str, typer.Option(help=_DRIVE + "gate-source voltages.")] = "",
-    current_density: Annotated[str, typer.Option(help=_DRIVE + "Id/W, such as 1uA/um.")] = "",
-    vdsat: Annotated[str, typer.Option(help=_DRIVE + "edge of saturation.")] = "",
-    id: Annotated[
-        str, typer.Option(help="Currents to scale to; with --count or --width a drive.")
+    length: Annotated[
+        str, typer.Option(metavar="VALUES", help=f"Channel lengths, such as 0.18u,0.5u. {NUMBERS}")
+    ],
+    vds: Annotated[
+        str,
+        typer.Option(
+            metavar="VALUES",
+            help="Drain-source voltages, or diode for vds = vgs; magnitudes for p.",
+        ),
+    ],
+    gm_over_id: Annotated[
+        str, typer.Option(metavar="VALUES", help=_DRIVE + "gm/Id, such as 5:25:5.")
     ] = "",
-    gm: Annotated[str, typer.Option(help="Transconductances to scale to.")] = "",
-    width: Annotated[str, typer.Option(help="Total widths to scale to.")] = "",
-    count: Annotated[str, typer.Option(help="Numbers of unit transistors to scale to.")] = "",
-    vsb: Annotated[str, typer.Option(help="Source-bulk voltages, 0 by default.")] = "",
-    corner: Annotated[str, typer.Option(help="Corners, such as tt,ss; nominal by default.")] = "",
+    vgs: Annotated[str, typer.Option(metavar="VALUES", help=_DRIVE + "gate-source voltages.")] = "",
+    current_density: Annotated[
+        str, typer.Option(metavar="VALUES", help=_DRIVE + "Id/W, such as 1uA/um.")
+    ] = "",
+    vdsat: Annotated[str, typer.Option(metavar="VALUES", help=_DRIVE + "edge of saturation.")] = "",
+    id: Annotated[
+        str,
+        typer.Option(
+            metavar="VALUES", help="Currents to scale to; with --count or --width a drive."
+        ),
+    ] = "",
+    gm: Annotated[str, typer.Option(metavar="VALUES", help="Transconductances to scale to.")] = "",
+    width: Annotated[str, typer.Option(metavar="VALUES", help="Total widths to scale to.")] = "",
+    count: Annotated[
+        str, typer.Option(metavar="VALUES", help="Numbers of unit transistors to scale to.")
+    ] = "",
+    vsb: Annotated[
+        str, typer.Option(metavar="VALUES", help="Source-bulk voltages, 0 by default.")
+    ] = "",
+    corner: Annotated[
+        str, typer.Option(metavar="NAMES", help="Corners, such as tt,ss; nominal by default.")
+    ] = "",
     temp: Annotated[
-        str, typer.Option(help="Temperatures, such as -40,27,125; nominal by default.")
+        str,
+        typer.Option(
+            metavar="VALUES", help="Temperatures, such as -40,27,125; nominal by default."
+        ),
     ] = "",
     condition: Annotated[
-        str, typer.Option(help="In place of both: such as tt/27,ss/125, or all.")
+        str, typer.Option(metavar="LIST", help="In place of both: such as tt/27,ss/125, or all.")
     ] = "",
     interpolate: Annotated[
         bool, typer.Option("--interpolate", help="Allow temperatures between those of the table.")
     ] = False,
-    show: Annotated[str, typer.Option(help="Quantities to list, such as gm,cgg, or all.")] = "",
+    show: Annotated[
+        str,
+        typer.Option(
+            metavar="NAMES",
+            help="Quantities to list, such as gm,cgg, or all.",
+            autocompletion=complete_quantities,
+        ),
+    ] = "",
     as_json: Annotated[bool, typer.Option("--json", help="Print as JSON, SI.")] = False,
     as_csv: Annotated[bool, typer.Option("--csv", help="Print as CSV, SI.")] = False,
 ) -> None:
-    """Answer bias questions: one row for every combination of the values given.
+    """Answer bias questions from a table.
 
-    Give one drive, and at most one thing to scale to; without that, answers are for one unit
-    transistor. The last of corner, temperature, length, vsb, vds, drive, scale varies fastest.
+    One row for every combination of the values given. Give one drive, and at most one thing to
+    scale to; without that, answers are for one unit transistor. The last of corner, temperature,
+    length, vsb, vds, drive, scale varies fastest.
 
-    Example: gmid query larch180.h5 nmos --gm-over-id 5:25:5 --length 0.18u,1u --vds 0.6 --id 10u
+    Example: gmid query larch180.h5 nmos --gm-over-id 15 --length 1u --vds 0.6
     """
     texts = (length, "" if vds == "diode" else vds, vsb, vgs, gm_over_id, current_density,
              vdsat, id, gm, width, count)  # fmt: skip
     question = _read_question(texts, diode=vds == "diode")
-    if as_json and as_csv:
-        raise UsageFault("--json and --csv exclude each other.", hint="Give one.")
+    choose_form(as_json=as_json, as_csv=as_csv)
     from gmid.device.opening import open_table
 
     devices = choose_devices(

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
+from gmid.cli.auditing import audit_rows, merge_notes, write_import_figures
 from gmid.cli.output import write_columns, write_csv, write_json
 
 if TYPE_CHECKING:
@@ -19,6 +20,11 @@ def show_command(
     audit: Annotated[
         bool, typer.Option("--audit", help="Also what the imports converted, derived, doubted.")
     ] = False,
+    figures: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="Also draw gm against the slope of the current."),
+    ] = None,
+    force: Annotated[bool, typer.Option("--force", help="Replace figures there.")] = False,
     as_json: Annotated[bool, typer.Option("--json", help="Print as JSON.")] = False,
     as_csv: Annotated[bool, typer.Option("--csv", help="Print one CSV row a sweep.")] = False,
 ) -> None:
@@ -33,6 +39,8 @@ def show_command(
 
     opened = open_grid_data(table)
     sweeps = [opened.sweep(entry.device, entry.condition) for entry in opened.entries]
+    if figures is not None:
+        write_import_figures(figures, sweeps, force=force)
     if as_json:
         write_json(
             {
@@ -123,14 +131,9 @@ def _print(table: Table, sweeps: list[Sweep], *, audit: bool) -> None:
     )
     if audit:
         typer.echo("\nAudit")
-        write_columns(
-            ["device", "condition", "audit", "note"],
-            [
-                [s.device, str(s.condition), level, text]
-                for s in sweeps
-                for level, text in _audit(s)
-            ],
-        )
+        notes = merge_notes(audit_rows(sweeps))
+        columns = ["device", "conditions", "audit", "note"]
+        write_columns(columns, [[note[name] for name in columns] for note in notes])
     else:
         typer.echo("\nWith --audit: what the imports converted, flipped, derived and doubted.")
 

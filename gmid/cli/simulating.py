@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from gmid.cli.output import make_progress, write_columns, write_csv, write_json
+from gmid.cli.output import choose_form, make_progress, write_columns, write_csv, write_json
 from gmid.errors import UsageFault
 
 if TYPE_CHECKING:
@@ -15,11 +15,13 @@ if TYPE_CHECKING:
 
 
 def simulate_command(
-    plan: Annotated[Path, typer.Argument(help="A plan file, such as size writes.")],
+    plan: Annotated[Path, typer.Argument(metavar="PLAN", help="A plan file, such as size writes.")],
     models: Annotated[
         list[str],
         typer.Option(
-            "--models", help="CONDITION=FILE, such as tt/27=models_tt.inc; once a condition."
+            "--models",
+            metavar="CONDITION=FILE",
+            help="Model cards, such as tt/27=models_tt.inc; once a condition.",
         ),
     ],
     supplies: Annotated[
@@ -41,6 +43,7 @@ def simulate_command(
     from gmid.simulation.plans import PARTS
     from gmid.tasks.simulating import QUICK, read_models, simulate
 
+    choose_form(as_json=as_json, as_csv=as_csv)
     found = simulate(
         plan, read_models(split_models(models)), supplies=supplies,
         parts=QUICK if quick else PARTS, progress=make_progress(),

@@ -75,7 +75,8 @@ def build_group() -> typer.Typer:
 
 def request_command(
     output: Annotated[
-        Path | None, typer.Option("-o", "--output", help="File to write; stdout by default.")
+        Path | None,
+        typer.Option("-o", "--output", metavar="FILE", help="File to write; stdout by default."),
     ] = None,
     force: Annotated[bool, typer.Option("--force", help="Replace an existing file.")] = False,
 ) -> None:
@@ -90,7 +91,8 @@ def request_command(
 
 def recipe_command(
     output: Annotated[
-        Path | None, typer.Option("-o", "--output", help="File to write; stdout by default.")
+        Path | None,
+        typer.Option("-o", "--output", metavar="FILE", help="File to write; stdout by default."),
     ] = None,
     force: Annotated[bool, typer.Option("--force", help="Replace an existing file.")] = False,
 ) -> None:

@@ -17,9 +17,10 @@ array([2.390e-06, 2.551e-05])
 from __future__ import annotations
 
 from gmid.device.device import DRIVES, Device
-from gmid.device.model import DeviceModel, SmallSignal
+from gmid.device.model import DeviceModel
 from gmid.device.opening import DeviceTable, open_table
 from gmid.device.operating_point import OperatingPoint
+from gmid.device.small_signal import SmallSignal
 
 __all__ = [
     "DRIVES",

@@ -7,9 +7,9 @@ body biases suffice.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,7 +26,8 @@ from gmid.device.curves import (
     slope_operator,
 )
 from gmid.device.grid import Lines
-from gmid.device.reading import Reading, cubic_reading, quintic_reading
+from gmid.device.reading import Reading, cubic_reading, quintic_reading, read_quintic
+from gmid.device.roots import solve_newton
 from gmid.device.smoothness import is_noisy, slopes_agree
 from gmid.device.spline import Array, SplineAxis, uniform_axis
 from gmid.sweep.model import Sweep
@@ -124,7 +125,7 @@ class AlignedGrid:
             rises = (strength - offset)[..., :-1] < target[..., :-1]
             rises &= (strength - offset)[..., 1:] >= target[..., 1:]
             if rises.any(axis=-1).all():
-                return _bisect(self._current_curves(middle), rises, target[..., 0])
+                return _cross(self._current_curves(middle), rises, target[..., 0])
         return np.zeros(strength.shape[:2])
 
     def _current_curves(self, drain: int) -> Curves:
@@ -151,8 +152,7 @@ class AlignedGrid:
     @cached_property
     def refinement(self) -> Array:
         """Matrix from values on the sweep's vds to values on `drain`."""
-        own, fine = drain_coordinate(self.sweep.vds), drain_coordinate(self.drain)
-        return cubic_reading(own, fine).values[0]
+        return _refine(self.sweep.vds.tobytes())
 
     @cached_property
     def _places(self) -> Array:
@@ -162,11 +162,12 @@ class AlignedGrid:
     @cached_property
     def _solving(self) -> Reading:
         """Matrices from values along vgs to coefficients along the shifted gate axis."""
-        reading = cubic_reading(self.sweep.vgs, self._places)
-        return Reading(
-            tuple(self.gate.operator @ part for part in reading.values),
-            tuple(self.gate.operator @ part for part in reading.slopes),
-        )
+        found = np.empty((2, *self.threshold.shape, self.gate.size, self.sweep.vgs.size))
+        for length, places in enumerate(self._places):
+            reading = cubic_reading(self.sweep.vgs, places)
+            for kind, (part,) in enumerate((reading.values, reading.slopes)):
+                np.matmul(self.gate.operator, part, out=found[kind, length])
+        return Reading((found[0],), (found[1],))
 
     @cached_property
     def _between(self) -> tuple[Array, Array] | None:
@@ -201,40 +202,40 @@ class AlignedGrid:
     def _current(self) -> tuple[Array, Array]:
         """Coefficients of the smooth variable and of its slope by vgs, guided by gm."""
         vgs, q, steep = self.sweep.vgs, self.channel.logarithm, self.channel.gate_ratio
-        reading = quintic_reading(vgs, self._places)
-        found = [
-            _apply(on_values, q) + _apply(on_slopes, steep)
-            for on_values, on_slopes in (reading.values, reading.slopes)
-        ]
-        beyond = self._places[:, :, None] - vgs[-1]
-        first = int(np.argmax(np.append((beyond > 0).any(axis=(0, 1, 2)), True)))
-        beyond = beyond[..., first:]
-        end = (q[..., -1:], steep[..., -1:], steep @ slope_operator(vgs)[-1:].T)
-        for part, bent in zip(found, follow_bent(*end, beyond), strict=True):
-            part[..., first:] = np.where(beyond > 0, bent, part[..., first:])
-        return found[0] @ self.gate.operator.T, found[1] @ self.gate.operator.T
+        by_slopes, found = slope_operator(vgs)[-1:].T, np.empty((2, *q.shape[:3], self.gate.size))
+        for length, places in enumerate(self._places):
+            here, tilt = q[length], steep[length]
+            read = read_quintic(vgs, places[None], here[None], tilt[None])[:, 0]
+            beyond = places[:, None] - vgs[-1]
+            first = int(np.argmax(np.append((beyond > 0).any(axis=(0, 1)), True)))
+            beyond = beyond[..., first:]
+            end = (here[..., -1:], tilt[..., -1:], tilt @ by_slopes)
+            for part, bent in zip(read, follow_bent(*end, beyond), strict=True):
+                part[..., first:] = np.where(beyond > 0, bent, part[..., first:])
+            np.matmul(read, self.gate.operator.T, out=found[:, length])
+        return found[0], found[1]
 
-    def lines(self, names: Sequence[str]) -> list[Lines]:
-        """Give quantities in the variables in which they are smooth, along the shifted gate axis.
+    def lines(self, names: Sequence[str]) -> Iterator[Lines]:
+        """Yield quantities in the variables in which they are smooth, along the shifted gate axis.
 
         Parameters
         ----------
         names : sequence of str
             Quantities of the sweep, and ``rest`` for the current at vds = 0.
 
-        Returns
-        -------
-        list of Lines
+        Yields
+        ------
+        Lines
             ``rest`` has one drain point.
 
         Examples
         --------
         >>> from gmid.device.example import example_sweep
-        >>> AlignedGrid(example_sweep()).lines(["gmb"])[0].coarse.shape[:3]
+        >>> next(AlignedGrid(example_sweep()).lines(["gmb"])).coarse.shape[:3]
         (3, 3, 13)
         """
         self.sweep.fetch([name for name in names if name != "rest"])
-        return [self._line_up(name) for name in names]
+        yield from (self._line_up(name) for name in names)
 
     def _line_up(self, name: str) -> Lines:
         if name == "rest":
@@ -301,6 +302,15 @@ class AlignedGrid:
         return self._lay(values).values(self._places[:, :, None]) @ self.gate.operator.T
 
 
+@lru_cache(maxsize=32)
+def _refine(raw: bytes) -> Array:
+    """Make the refinement of some vds once, for every condition."""
+    vds = np.frombuffer(raw)
+    reading = cubic_reading(drain_coordinate(vds), drain_coordinate(refine_drain(vds)))
+    reading.values[0].flags.writeable = False
+    return reading.values[0]
+
+
 def _apply(matrices: Array, lines: Array) -> Array:
     """Apply the matrix of each length and vsb to all lines over vgs there."""
     return np.asarray(lines @ np.swapaxes(matrices, -1, -2))
@@ -332,17 +342,20 @@ def gate_reach(grid: AlignedGrid) -> tuple[float, float]:
     return float(vgs[0]) - high, float(vgs[-1]) - low
 
 
-def _bisect(curves: Curves, rises: NDArray[np.bool_], target: Array) -> Array:
+def _cross(curves: Curves, rises: NDArray[np.bool_], target: Array) -> Array:
     """Find where curves last cross a target upwards, between the points marked for each."""
     last = rises.shape[-1] - 1 - np.argmax(rises[..., ::-1], axis=-1)
-    powers = np.moveaxis(np.take_along_axis(curves.pieces, last[..., None, None], axis=-2), -1, 0)
-    low, high = np.zeros(last.shape), np.ones(last.shape)
-    for _ in range(50):
-        middle = 0.5 * (low + high)
-        value = powers[-1, ..., 0]
-        for coefficient in powers[-2::-1, ..., 0]:
-            value = value * middle + coefficient
-        below = value < target
-        low, high = np.where(below, middle, low), np.where(below, high, middle)
+    picked = np.take_along_axis(curves.pieces, last[..., None, None], axis=-2)[..., 0, :]
+    powers = picked.reshape(-1, picked.shape[-1]).T
+    goal = np.broadcast_to(target, last.shape).ravel()
+
+    def evaluate(t: Array) -> tuple[Array, Array]:
+        value, slope = powers[-1], np.zeros(t.size)
+        for coefficient in powers[-2::-1]:
+            slope = slope * t + value
+            value = value * t + coefficient
+        return value, slope
+
+    root = solve_newton(evaluate, goal, np.zeros(goal.size), np.ones(goal.size), 1.0)
     width = np.diff(curves.points)[last]
-    return np.asarray(curves.points[last] + 0.5 * (low + high) * width)
+    return np.asarray(curves.points[last] + root.reshape(last.shape) * width)

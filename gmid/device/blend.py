@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 
@@ -145,17 +145,17 @@ class BlendedGrid:
         """Matrix from values on the sweep's vds to values on `drain`."""
         return self.parts[0].refinement
 
-    def lines(self, names: Sequence[str]) -> list[Lines]:
-        """Give transformed quantities along the shifted gate axis.
+    def lines(self, names: Sequence[str]) -> Iterator[Lines]:
+        """Yield transformed quantities along the shifted gate axis.
 
         Parameters
         ----------
         names : sequence of str
             As for `AlignedGrid.lines`.
 
-        Returns
-        -------
-        list of Lines
+        Yields
+        ------
+        Lines
             The blend of the parts.
 
         Examples
@@ -163,16 +163,14 @@ class BlendedGrid:
         >>> from gmid.device.example import example_sweep
         >>> cold = example_sweep()
         >>> hot = replace(cold, condition=Condition("tt", 28.0))
-        >>> BlendedGrid.of([cold, hot], 27.5).lines(["gmb"])[0].coarse.shape[:3]
+        >>> next(BlendedGrid.of([cold, hot], 27.5).lines(["gmb"])).coarse.shape[:3]
         (3, 3, 13)
         """
-        return [
-            Lines(
+        for parts in zip(*(part.lines(names) for part in self.parts), strict=True):
+            yield Lines(
                 _blend(self._weights, [part.coarse for part in parts]),
                 _blend(self._weights, [part.fine for part in parts]),
             )
-            for parts in zip(*(part.lines(names) for part in self.parts), strict=True)
-        ]
 
 
 def _blend(weights: Array, parts: Sequence[Array | None]) -> Array | None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Mapping
 
 import numpy as np
 
@@ -80,34 +80,6 @@ def sort_cells(
     return order, starts.tolist(), corners.tolist()
 
 
-def group_points(
-    shape: tuple[int, ...], spans: list[Indices]
-) -> Iterator[tuple[Indices, list[int]]]:
-    """Yield the points of each cell together with its spans.
-
-    Parameters
-    ----------
-    shape : tuple of int
-        Number of spans along each axis.
-    spans : list of ndarray of int, shape (n,)
-        Span of each point along each axis.
-
-    Yields
-    ------
-    members : ndarray of int
-        Points of one cell.
-    corner : list of int
-        Its spans.
-
-    Examples
-    --------
-    >>> [(m.tolist(), c) for m, c in group_points((2,), [np.array([1, 0, 1])])]
-    [([1], [0]), ([0, 2], [1])]
-    """
-    order, starts, corners = sort_cells(shape, spans)
-    yield from zip(np.split(order, starts[1:]), corners, strict=True)
-
-
 def multiply_weights(weights: list[Array]) -> Array:
     """Multiply the weights of all axes out, the last axis fastest.
 
@@ -130,3 +102,35 @@ def multiply_weights(weights: list[Array]) -> Array:
     for weight in weights[1:]:
         found = (found[:, :, None] * weight[:, None, :]).reshape(found.shape[0], -1)
     return found
+
+
+def slide(values: Array, axes: Mapping[int, SplineAxis], pick: np.ufunc) -> Array:
+    """Take the least or largest of all coefficients that bear on each cell.
+
+    Parameters
+    ----------
+    values : ndarray
+        Coefficients.
+    axes : mapping of int to SplineAxis
+        Axes of `values` along which cells lie.
+    pick : ufunc
+        ``np.minimum`` or ``np.maximum``.
+
+    Returns
+    -------
+    ndarray
+        With spans in place of coefficients along those axes.
+
+    Examples
+    --------
+    >>> from gmid.device.spline import natural_axis
+    >>> slide(np.array([1.0, 3.0, 2.0]), {0: natural_axis(np.arange(3.0))}, np.maximum)
+    array([3.])
+    """
+    for position, axis in axes.items():
+        lines = np.moveaxis(values, position, 0)
+        found = lines[: axis.spans]
+        for step in range(1, axis.order):
+            found = pick(found, lines[step : step + axis.spans])
+        values = np.moveaxis(found, 0, position)
+    return values

@@ -186,14 +186,14 @@ class Channel:
         return np.concatenate((extrapolate_first(inner, self.sweep.vds), inner), axis=2)
 
 
-def saturate(vds: Array, thermal_voltage: float) -> Array:
+def saturate(vds: Array, thermal_voltage: Array | float) -> Array:
     """Give the factor by which weak inversion falls towards vds = 0.
 
     Parameters
     ----------
     vds : ndarray
         Drain-source voltage [V].
-    thermal_voltage : float
+    thermal_voltage : float or ndarray, shape of vds
         kT/q [V].
 
     Returns

@@ -7,16 +7,20 @@ consecutive numbers.
 
 from __future__ import annotations
 
-import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from typing import TYPE_CHECKING
 
 import numpy as np
-from numpy.lib.stride_tricks import as_strided, sliding_window_view
+from numpy.lib.stride_tricks import as_strided
 
-from gmid.device.cells import group_points, multiply_weights, place_points
+from gmid.device.cells import place_points, slide
 from gmid.device.coordinates import drain_coordinate, drain_stretch
 from gmid.device.spline import Array, Indices, SplineAxis
+
+if TYPE_CHECKING:
+    from gmid.device.plain import PointReader
 
 OFF_SLOPE, ON_SLOPE = 10.0, 1.0
 """Slopes of ln id by vgs below and above the table, for a solver on its way [1/V]."""
@@ -159,17 +163,32 @@ class Collapsed:
         if past is not None:
             shift = shift + tilt * past
             d_bulk = (d_bulk.T * (past == 0)).T
-        gate_at = vgs - shift
-        gate_in = np.clip(gate_at, self.gate.breaks[0], self.gate.breaks[-1])
+        gate_at, last, width = self._along_gate(which, vgs - shift)
+        gate_in = np.clip(gate_at, self.gate.breaks[0], last)
         drain, drain_place = self.vds.locate(drain_coordinate(vds))
         w_drain, d_drain = self.vds.both(drain, drain_place)
         d_drain = (d_drain.T * drain_stretch(vds)).T
         gate, gate_place = self.gate.locate(gate_in)
         w_gate, d_gate = self.gate.both(gate, gate_place)
+        d_gate = (d_gate.T / width).T
         first = ((which * self.vsb.spans + bulk) * self.vds.size + drain) * self.gate.size + gate
         return Place(
-            first, w_drain, w_gate, w_bulk, d_drain, d_gate, d_bulk, tilt, gate_at - gate_in
+            first,
+            w_drain,
+            w_gate,
+            w_bulk,
+            d_drain,
+            d_gate,
+            d_bulk,
+            tilt,
+            (gate_at - gate_in) * width,
         )
+
+    def _along_gate(
+        self, which: Indices, gate: Array
+    ) -> tuple[Array, Array | float, Array | float]:
+        """Give places on the gate axis, its upper end there, and a unit of it in volts."""
+        return gate, float(self.gate.breaks[-1]), 1.0
 
     def values(self, place: Place) -> Array:
         """Evaluate all quantities.
@@ -204,41 +223,20 @@ class Collapsed:
             found[part] = np.einsum("nsq,ns->nq", by_bulk, place.vsb[part])
         return found
 
-    def read_one(self, which: int, vgs: float, vds: float, vsb: float) -> Array:
-        """Evaluate all quantities at a single point, in a third of the time of `values`.
+    @cached_property
+    def reader(self) -> PointReader:
+        """Reads single points, of the first length."""
+        from gmid.device.plain import PointReader  # a terminal's query does without
 
-        Parameters
-        ----------
-        which : int
-            Which of the lengths.
-        vgs, vds, vsb : float
-            Voltages [V], inside the table.
+        return PointReader(self)
 
-        Returns
-        -------
-        ndarray, shape (quantities,)
-            Interpolated values.
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """Number of cells along length, vsb and vds."""
+        return (self.lengths, self.vsb.spans, self.vds.spans)
 
-        Examples
-        --------
-        >>> from gmid.device.spline import natural_axis, uniform_axis
-        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
-        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 7, 1, 2)), np.ones((1, 1, 1)), 0.8)
-        >>> spline.read_one(0, 1.0, 0.0, 0.0).round(9)
-        array([1., 1.])
-        """
-        bulk, by_bulk = self.vsb.place_one(math.sqrt(self.offset + vsb))
-        at = vgs - float(by_bulk.dot(self.threshold[which, bulk]))
-        ends = self.gate.breaks
-        gate, by_gate = self.gate.place_one(min(max(at, float(ends[0])), float(ends[-1])))
-        drain, by_drain = self.vds.place_one(float(drain_coordinate(np.asarray(vds))))
-        rows = self.coefficients[which, bulk, drain : drain + by_drain.size]
-        block = rows[:, gate : gate + by_gate.size].reshape(by_drain.size, -1)
-        lines = by_gate.dot(by_drain.dot(block).reshape(by_gate.size, -1))
-        return np.asarray(by_bulk.dot(lines.reshape(by_bulk.size, -1)))
-
-    def curves(self, which: Indices, vsb: Array, vds: Array) -> Array:
-        """Collapse to coefficients along the gate axis alone.
+    def cells(self, which: Indices, vsb: Array, vds: Array) -> tuple[list[Indices], list[Array]]:
+        """Find the cells of length, vsb and vds in which points lie, as `Stack.cells` does.
 
         Parameters
         ----------
@@ -249,29 +247,46 @@ class Collapsed:
 
         Returns
         -------
-        ndarray, shape (n, n_gate, quantities)
-            Coefficients of one curve for each point and quantity.
-
-        Examples
-        --------
-        >>> from gmid.device.spline import natural_axis, uniform_axis
-        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
-        >>> spline = Collapsed(one, one, gate, np.ones((1, 1, 1, 7, 1, 2)), np.ones((1, 1, 1)), 0.8)
-        >>> spline.curves(np.zeros(2, int), np.zeros(2), np.zeros(2)).shape
-        (2, 7, 2)
+        spans : list of ndarray of int, shape (n,)
+            Length, span along vsb and along vds.
+        weights : list of ndarray, shape (n, order)
+            Weights along vsb and vds, for the rows of `block`.
         """
-        axes = (self.vsb, self.vds)
         points = (np.sqrt(self.offset + vsb), drain_coordinate(vds))
-        (bulk, drain), weights = place_points(axes, points)
-        _, _, _, gates, _, count = self.coefficients.shape
-        found = np.empty((which.size, gates, count))
-        shape = (self.lengths, self.vsb.spans, self.vds.spans)
-        for members, (length, low, left) in group_points(shape, [which, bulk, drain]):
-            block = self.coefficients[length, low, left : left + self.vds.order]
-            outer = multiply_weights([weights[0][members], weights[1][members]])
-            rows = block.transpose(2, 0, 1, 3).reshape(outer.shape[1], -1)
-            found[members] = (outer @ rows).reshape(-1, gates, count)
-        return found
+        spans, weights = place_points((self.vsb, self.vds), points)
+        return [which, *spans], weights
+
+    def block(self, corner: Sequence[int], gates: slice = slice(None)) -> Array:
+        """Give the coefficients that bear on one cell, as `Stack.block` does.
+
+        Parameters
+        ----------
+        corner : sequence of int
+            Its length and spans.
+        gates : slice
+            Which of the coefficients along the gate axis.
+
+        Returns
+        -------
+        ndarray, shape (products of the weights, quantities, n_gate)
+            Coefficients.
+        """
+        length, low, left = corner
+        block = self.coefficients[length, low, left : left + self.vds.order, gates]
+        rows = self.vsb.order * self.vds.order
+        return block.transpose(2, 0, 3, 1).reshape(rows, block.shape[-1], -1)
+
+    def extremes(self) -> tuple[Array, Array]:
+        """Give the least and largest coefficient that bear on each cell.
+
+        Returns
+        -------
+        least, most : ndarray, shape (*shape, gate spans, quantities)
+            Bounds of the splines.
+        """
+        axes = {2: self.vds, 3: self.gate}
+        low = slide(self.coefficients.min(axis=4), axes, np.minimum)
+        return low, slide(self.coefficients.max(axis=4), axes, np.maximum)
 
     def gradient(self, place: Place) -> tuple[Array, Array, Array, Array]:
         """Evaluate the first quantity and its derivatives.
@@ -336,7 +351,7 @@ def expand_spans(solved: Array, vsb: SplineAxis) -> Array:
 
     Parameters
     ----------
-    solved : ndarray, shape (quantities, lengths, n_vsb, n_vds, n_gate)
+    solved : ndarray, shape (lengths, n_vds, n_gate, n_vsb, quantities)
         Coefficients.
     vsb : SplineAxis
         The axis of body bias.
@@ -349,8 +364,10 @@ def expand_spans(solved: Array, vsb: SplineAxis) -> Array:
     Examples
     --------
     >>> from gmid.device.spline import natural_axis
-    >>> expand_spans(np.arange(5.0).reshape(1, 1, 5, 1, 1), natural_axis(np.arange(5.0))).ravel()
+    >>> expand_spans(np.arange(5.0).reshape(1, 1, 1, 5, 1), natural_axis(np.arange(5.0))).ravel()
     array([0., 1., 2., 3., 1., 2., 3., 4.])
     """
-    spans = sliding_window_view(solved, vsb.order, axis=2)
-    return np.ascontiguousarray(spans.transpose(1, 2, 3, 4, 5, 0))
+    if vsb.spans == 1:
+        return solved[:, None]
+    spans = [solved[:, :, :, start : start + vsb.order] for start in range(vsb.spans)]
+    return np.stack(spans, axis=1)

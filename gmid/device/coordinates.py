@@ -9,7 +9,7 @@ from gmid.device.spline import Array
 _PHI = 0.8
 """Surface potential in the coordinate sqrt(phi + vsb) of the body bias [V]."""
 
-_KNEE = 0.1
+KNEE = 0.1
 """Voltage below which the coordinate ln(knee + vds) of the drain stops stretching [V]."""
 
 
@@ -117,7 +117,28 @@ def drain_coordinate(vds: Array) -> Array:
     >>> float(drain_coordinate(np.array(0.9)))
     0.0
     """
-    return np.asarray(np.log(_KNEE + vds))
+    return np.asarray(np.log(KNEE + vds))
+
+
+def invert_drain(coordinate: Array) -> Array:
+    """Undo `drain_coordinate`.
+
+    Parameters
+    ----------
+    coordinate : ndarray
+        Coordinate [-].
+
+    Returns
+    -------
+    ndarray
+        Drain-source voltage [V], not negative.
+
+    Examples
+    --------
+    >>> float(invert_drain(np.array(0.0)))
+    0.9
+    """
+    return np.maximum(np.exp(coordinate) - KNEE, 0.0)
 
 
 def drain_stretch(vds: Array) -> Array:
@@ -138,7 +159,7 @@ def drain_stretch(vds: Array) -> Array:
     >>> float(drain_stretch(np.array(0.4)))
     2.0
     """
-    return np.asarray(1.0 / (_KNEE + vds))
+    return np.asarray(1.0 / (KNEE + vds))
 
 
 def refine_drain(vds: Array) -> Array:
@@ -161,5 +182,5 @@ def refine_drain(vds: Array) -> Array:
     """
     fine = np.empty(2 * vds.size - 1)
     fine[::2] = vds
-    fine[1::2] = np.sqrt((_KNEE + vds[:-1]) * (_KNEE + vds[1:])) - _KNEE
+    fine[1::2] = np.sqrt((KNEE + vds[:-1]) * (KNEE + vds[1:])) - KNEE
     return fine

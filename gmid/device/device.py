@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from functools import cached_property
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -19,12 +19,18 @@ from gmid.device.model import DeviceModel
 from gmid.device.operating_point import OperatingPoint
 from gmid.device.quantities import derive_answer, list_needs, list_quantities
 from gmid.device.reach import settle_axes
-from gmid.device.spline import Array
+from gmid.device.spline import Array, Indices
 from gmid.errors import DataFault, UnknownName, UsageFault
 from gmid.sweep.model import Sweep, UnitTransistor
 
+if TYPE_CHECKING:
+    from gmid.device.single import SinglePoints
+
 DRIVES = ("vgs", "gm_over_id", "current_density", "vdsat", "id")
 """What may set the gate voltage; exactly one in a query."""
+
+_NUMBERS = frozenset({float, int, np.float64})
+"""Types of a single number."""
 
 
 class Device:
@@ -109,6 +115,31 @@ class Device:
         return self._grid.condition
 
     @property
+    def conditions(self) -> tuple[Condition, ...]:
+        """Corner and temperature, as the one condition that it is in."""
+        return (self.condition,)
+
+    @property
+    def place(self) -> Indices:
+        """Which of the conditions the items of a batch are in: all in the first."""
+        return np.zeros((), dtype=np.intp)
+
+    def at_place(self, place: ArrayLike) -> Device:
+        """Give the same device for another batch.
+
+        Parameters
+        ----------
+        place : array_like of int
+            All zero: there is one condition.
+
+        Returns
+        -------
+        Device
+            Itself.
+        """
+        return self
+
+    @property
     def unit(self) -> UnitTransistor:
         """The transistor that was characterised."""
         return self.sweep.unit
@@ -121,6 +152,12 @@ class Device:
     @cached_property
     def _stored(self) -> frozenset[str]:
         return frozenset(self.sweep.values)
+
+    @cached_property
+    def _single(self) -> SinglePoints:
+        from gmid.device.single import SinglePoints  # a terminal's query does without
+
+        return SinglePoints(self._interpolant, self.fields)
 
     @property
     def notes(self) -> tuple[str, ...]:
@@ -180,6 +217,15 @@ class Device:
         >>> device.at(length=1e-6, vds=0.6, gm_over_id=[5, 15, 25]).vgs.round(3)
         array([0.799, 0.49 , 0.343])
         """
+        if (
+            type(vgs) in _NUMBERS and type(vds) in _NUMBERS
+            and type(length) in _NUMBERS and type(vsb) in _NUMBERS
+            and gm_over_id is None and current_density is None and vdsat is None
+            and id is None and count is None and width is None
+        ):  # fmt: skip
+            point = self._single.at(length, vgs, vds, vsb, self._compute)
+            if point is not None:
+                return point
         drives = {
             "vgs": vgs, "gm_over_id": gm_over_id, "current_density": current_density,
             "vdsat": vdsat, "id": id,
@@ -262,6 +308,8 @@ class Device:
 
     def _compute(self, point: OperatingPoint, names: Sequence[str]) -> dict[str, Array]:
         """Answer fields of an operating point, for one unit."""
+        if isinstance(point.vgs, np.float64):
+            return self._single.compute(point, names)
         needs = list_needs(names, self._stored)
         bias = [np.ravel(part) for part in (point.length, point.vgs, point.vds, point.vsb)]
         values = self._interpolant.quantities(needs, *bias)
@@ -312,6 +360,11 @@ class Device:
             ends = [format_quantity(float(end), unit) for end in (axis[0], axis[-1])]
             ranges.append(f"{symbol} {' to '.join(dict.fromkeys(ends))}")
         return f"Device({self.name} {self.condition}: {', '.join(ranges)})"
+
+    def _repr_html_(self) -> str:
+        from gmid.device.telling import list_device
+
+        return list_device(self)
 
 
 def _check(sweep: Sweep) -> None:

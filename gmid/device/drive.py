@@ -120,7 +120,7 @@ class Drive:
 
         Parameters
         ----------
-        columns : ndarray, shape (..., columns)
+        columns : ndarray, shape (columns, ...)
             Transformed quantities, in the order of `columns`.
         factor : ndarray
             Saturation factor 1 - exp(-vds/vt), broadcasting.
@@ -138,27 +138,64 @@ class Drive:
         >>> Drive("id", spline).values(np.zeros((1, 1)), np.ones(1))
         array([0.])
         """
-        first = columns[..., 0]
+        first: Array = columns[0]
         if self.tables == ("id",):
             with np.errstate(divide="ignore"):
                 if not self.has_rest:
                     return np.asarray(first + np.log(factor))
-            return np.asarray(
-                np.log(np.maximum(np.exp(first) * factor + columns[..., 1], SMALLEST))
-            )
+            return np.asarray(np.log(np.maximum(np.exp(first) * factor + columns[1], SMALLEST)))
         if not self.has_rest:
             return first
-        channel = np.exp(columns[..., 1])
+        channel = np.exp(columns[1])
         channel *= factor
-        total = channel + columns[..., 2]
-        return first * np.divide(channel, total, out=np.ones(total.shape), where=total > 0)
+        total = channel + columns[2]
+        share: Array = np.divide(channel, total, out=np.ones(total.shape), where=total > 0)
+        return first * share
+
+    def bounds(
+        self, low: Array, high: Array, least_factor: Array, most_factor: Array
+    ) -> tuple[Array, Array]:
+        """Bound the scaled drive where transformed quantities are known within bounds.
+
+        Parameters
+        ----------
+        low, high : ndarray, shape (columns, ...)
+            Bounds of the transformed quantities, in the order of `columns`.
+        least_factor, most_factor : ndarray
+            Bounds of the saturation factor, broadcasting.
+
+        Returns
+        -------
+        low, high : ndarray, shape (...)
+            The drive lies between them; infinite where nothing can be said.
+
+        Examples
+        --------
+        >>> from gmid.device.aligned import AlignedGrid
+        >>> from gmid.device.example import example_sweep
+        >>> spline = Interpolant(AlignedGrid(example_sweep()))
+        >>> one = np.ones((1, 1))
+        >>> Drive("id", spline).bounds(0 * one, one, one[0], one[0])
+        (array([0.]), array([1.]))
+        """
+        if self.name != "gm_over_id" or not self.has_rest:
+            return self.values(low, least_factor), self.values(high, most_factor)
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            least, most = np.exp(low[1]) * least_factor, np.exp(high[1]) * most_factor
+            parts = low[2] / np.where(low[2] > 0, most, least)
+            more = high[2] / np.where(high[2] > 0, least, most)
+            shares = (1.0 / (1.0 + more), 1.0 / (1.0 + parts))
+            corners = np.stack([ratio * share for ratio in (low[0], high[0]) for share in shares])
+        good = (parts > -1.0) & np.isfinite(corners).all(axis=0)
+        found = np.where(good, corners.min(axis=0), -np.inf)
+        return found, np.where(good, corners.max(axis=0), np.inf)
 
     def slopes(self, columns: Array, slopes: Array, factor: Array) -> Array:
         """Give the derivative of the scaled drive.
 
         Parameters
         ----------
-        columns, slopes : ndarray, shape (..., columns)
+        columns, slopes : ndarray, shape (columns, ...)
             Transformed quantities and their derivatives, in the order of `columns`.
         factor : ndarray
             Saturation factor 1 - exp(-vds/vt), broadcasting.
@@ -176,17 +213,17 @@ class Drive:
         >>> Drive("id", spline).slopes(np.zeros((1, 1)), np.ones((1, 1)), np.ones(1))
         array([1.])
         """
-        slope = slopes[..., 0]
+        slope: Array = slopes[0]
         if not self.has_rest:
             return slope
         if self.tables == ("id",):
-            channel = np.exp(columns[..., 0]) * factor
-            total = np.maximum(channel + columns[..., 1], SMALLEST)
-            return np.asarray((channel * slope + slopes[..., 1]) / total)
-        first, rest = columns[..., 0], columns[..., 2]
-        channel = np.exp(columns[..., 1]) * factor
+            channel = np.exp(columns[0]) * factor
+            total = np.maximum(channel + columns[1], SMALLEST)
+            return np.asarray((channel * slope + slopes[1]) / total)
+        first, rest = columns[0], columns[2]
+        channel = np.exp(columns[1]) * factor
         total = channel + rest
         good = total > 0
         safe = np.where(good, total, 1.0)
-        tilt = channel * (slopes[..., 1] * rest - slopes[..., 2]) / safe**2
+        tilt = channel * (slopes[1] * rest - slopes[2]) / safe**2
         return np.where(good, slope * channel / safe + first * tilt, slope)

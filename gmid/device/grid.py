@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Protocol
 
@@ -73,17 +73,17 @@ class Grid(Protocol):
     def refinement(self) -> Array:
         """Matrix from values on the sweep's vds to values on `drain`."""
 
-    def lines(self, names: Sequence[str]) -> list[Lines]:
-        """Give transformed quantities along the shifted gate axis.
+    def lines(self, names: Sequence[str]) -> Iterator[Lines]:
+        """Yield transformed quantities along the shifted gate axis.
 
         Parameters
         ----------
         names : sequence of str
             Quantities of the sweep, and ``rest``.
 
-        Returns
-        -------
-        list of Lines
+        Yields
+        ------
+        Lines
             Each in the variable in which it is smooth.
         """
 

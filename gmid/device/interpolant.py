@@ -6,7 +6,7 @@ collapsed first; many different ones are read from the four-dimensional splines.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
 
@@ -21,12 +21,10 @@ from gmid.device.coordinates import (
     roll_off_coordinate,
 )
 from gmid.device.grid import Grid, Lines, spline_axes
+from gmid.device.keeping import KEEPER, borrow
 from gmid.device.restoring import ON_CURRENT, restore
 from gmid.device.spline import Array, Indices, SplineAxis, natural_axis
 from gmid.device.stack import Stack
-
-_KEPT = 64
-"""Collapsed splines kept for later queries."""
 
 _FEW_LENGTHS = 8
 _POINTS_PER_LENGTH = 40
@@ -54,9 +52,11 @@ class Interpolant:
     """
 
     grid: Grid
-    _lines: dict[str, Lines] = field(default_factory=dict, repr=False)
-    _stacks: dict[tuple[str, ...], Stack] = field(default_factory=dict, repr=False)
-    _kept: dict[tuple[tuple[str, ...], bytes], Collapsed] = field(default_factory=dict, repr=False)
+    _asked: set[str] = field(default_factory=set, init=False, repr=False)
+
+    @cached_property
+    def _number(self) -> int:
+        return KEEPER.own(self)
 
     @cached_property
     def axes(self) -> tuple[SplineAxis, SplineAxis, SplineAxis, SplineAxis]:
@@ -155,14 +155,13 @@ class Interpolant:
         Stack(3 x 25 x 102 x 3, 2 quantities)
         """
         key = tuple(names)
-        if key not in self._stacks:
-            if len(self._stacks) >= _KEPT:
-                self._stacks.pop(next(iter(self._stacks)))
-            solved = self._solve(key, self.axes[0].operator)
-            together = np.ascontiguousarray(solved.transpose(1, 3, 4, 2, 0))
-            length, vsb, _, gate = self.axes
-            self._stacks[key] = Stack(length, vsb, self._across(key), gate, together)
-        return self._stacks[key]
+        kept: Stack | None = KEEPER.find(self._number, key)
+        if kept is not None:
+            return kept
+        solved = self._solve(key, self.axes[0].operator)
+        length, vsb, _, gate = self.axes
+        made = Stack(length, vsb, self._across(key), gate, solved)
+        return KEEPER.keep(self._number, key, made, solved.nbytes)
 
     def collapse(self, names: Sequence[str], length: Array) -> Collapsed:
         """Give the splines of some quantities at settled lengths.
@@ -187,22 +186,22 @@ class Interpolant:
         1
         """
         key = (tuple(names), length.tobytes())
-        if key not in self._kept:
-            if len(self._kept) >= _KEPT:
-                self._kept.pop(next(iter(self._kept)))
-            axis = self.axes[0]
-            span, place = axis.locate(length_coordinate(length))
-            columns = span[:, None] + np.arange(axis.order)
-            settling = np.einsum("kl,kln->kn", axis.weights(span, place), axis.operator[columns])
-            self._kept[key] = Collapsed(
-                self.axes[1],
-                self._across(key[0]),
-                self.axes[3],
-                expand_spans(self._solve(key[0], settling), self.axes[1]),
-                self.threshold_lines(length)[:, self._columns],
-                self.offset,
-            )
-        return self._kept[key]
+        kept: Collapsed | None = KEEPER.find(self._number, key)
+        if kept is not None:
+            return kept
+        axis = self.axes[0]
+        span, place = axis.locate(length_coordinate(length))
+        columns = span[:, None] + np.arange(axis.order)
+        settling = np.einsum("kl,kln->kn", axis.weights(span, place), axis.operator[columns])
+        made = Collapsed(
+            self.axes[1],
+            self._across(key[0]),
+            self.axes[3],
+            expand_spans(self._solve(key[0], settling), self.axes[1]),
+            self.threshold_lines(length)[:, self._columns],
+            self.offset,
+        )
+        return KEEPER.keep(self._number, key, made, made.coefficients.nbytes)
 
     def _across(self, names: tuple[str, ...]) -> SplineAxis:
         """Take the drain axis, which the current at vds = 0 alone has not."""
@@ -226,22 +225,51 @@ class Interpolant:
     def _solve(self, names: tuple[str, ...], settling: Array) -> Array:
         """Solve for coefficients, the lengths first settled by rows of weights.
 
-        The result has shape (names, rows, n_vsb, n_drain, n_gate).
+        The result has shape (rows, n_drain, n_gate, n_vsb, names).
         """
         _, vsb, vds, gate = self.axes
         rows, drains = len(settling), self._across(names).size
-        found = np.zeros((len(names), rows, vsb.size, drains, gate.size))
-        missing = [name for name in names if name not in self._lines]
-        self._lines.update(zip(missing, self.grid.lines(missing), strict=True))
-        for column, name in zip(found, names, strict=True):
-            lines = self._lines[name]
-            for part, operator in ((lines.coarse, self._refining), (lines.fine, vds.operator)):
-                if part is None:
-                    continue
-                settled = (settling @ part.reshape(len(part), -1)).reshape(rows, vsb.size, -1)
-                settled = (vsb.operator @ settled).reshape(rows, *part.shape[1:])
-                column += settled if name == "rest" else operator @ settled
+        coarse = borrow((len(names), rows, vsb.size, self._refining.shape[1], gate.size))
+        others: dict[int, Array] = {}
+        for place, (name, lines) in enumerate(zip(names, self._lines(names), strict=True)):
+            coarse[place] = 0.0
+            if name == "rest":
+                others[place] = self._settle_lines(lines.parts[0], settling)
+                continue
+            if lines.coarse is not None:
+                coarse[place] = self._settle_lines(lines.coarse, settling)
+            if lines.fine is not None:
+                others[place] = vds.operator @ self._settle_lines(lines.fine, settling)
+        found = np.zeros((rows, drains, gate.size, vsb.size, len(names)))
+        if names != ("rest",):
+            for row, part in enumerate(coarse.swapaxes(0, 1)):
+                lines_of_vds = np.ascontiguousarray(part.transpose(2, 3, 1, 0))
+                np.matmul(
+                    self._refining,
+                    lines_of_vds.reshape(len(lines_of_vds), -1),
+                    out=found[row].reshape(drains, -1),
+                )
+        for place, solved in others.items():
+            found[..., place] += solved.transpose(0, 2, 3, 1)
         return found
+
+    def _settle_lines(self, part: Array, settling: Array) -> Array:
+        """Settle lengths and solve along vsb; shape (rows, n_vsb, n_vds, n_gate)."""
+        vsb = self.axes[1]
+        settled = (settling @ part.reshape(len(part), -1)).reshape(len(settling), vsb.size, -1)
+        return (vsb.operator @ settled).reshape(len(settling), *part.shape[1:])
+
+    def _lines(self, names: Sequence[str]) -> Iterator[Lines]:
+        """Yield coefficients along the gate axis, which are kept if asked for again."""
+        found = {name: KEEPER.find(self._number, ("lines", name)) for name in names}
+        made = self.grid.lines([name for name in names if found[name] is None])
+        for name in names:
+            lines: Lines = found[name] or next(made)
+            if found[name] is None and name in self._asked:
+                size = sum(part.nbytes for part in lines.parts)
+                KEEPER.keep(self._number, ("lines", name), lines, size)
+            self._asked.add(name)
+            yield lines
 
     def settle(self, names: Sequence[str], length: Array) -> tuple[Collapsed, Indices] | None:
         """Give the splines at the lengths of some points, if those are few.
@@ -309,7 +337,8 @@ class Interpolant:
         if settled is not None:
             spline, which = settled
             if vgs.size == 1:
-                return spline.read_one(0, float(vgs[0]), float(vds[0]), float(vsb[0]))[None]
+                reader = spline.reader
+                return reader.read(reader.locate(float(vgs[0]), float(vds[0]), float(vsb[0])))[None]
             return spline.values(spline.locate(which, vgs, vds, vsb))
         gate = vgs - self.threshold(length, vsb)
         bulk = bulk_coordinate(vsb, float(self.grid.sweep.vsb[0]))

@@ -15,10 +15,16 @@ from gmid.device.coordinates import bulk_coordinate, drain_coordinate, length_co
 from gmid.device.drive import Drive
 from gmid.device.interpolant import Interpolant
 from gmid.device.reach import refuse_targets
-from gmid.device.roots import bracket, solve_false_position, solve_newton
-from gmid.device.spline import Array, Indices, SplineAxis
+from gmid.device.roots import bracket, solve_false_position
+from gmid.device.spline import Array, SplineAxis
+from gmid.device.windows import Places, Windows, pick_stencil, solve_span
 
 _CHUNK = 512
+"""Points whose whole curves are held at a time."""
+
+_MANY = 1500
+"""Points from which on bounds are worth their cost."""
+
 _SAMPLES = 81
 """Points along vgs = vds at which a diode's curve is first looked at."""
 
@@ -60,87 +66,64 @@ def solve_drive(
     0.49
     """
     drive = Drive(name, interpolant)
-    found = np.empty(target.size)
-    settled = interpolant.settle(drive.columns, length)
-    low, high = np.empty(target.size), np.empty(target.size)
-    scaled = drive.scale(target)
-    order = _sort_by_cell(interpolant, length, vds)
-    for start in range(0, target.size, _CHUNK):
-        part = order[start : start + _CHUNK]
-        if settled is not None:
-            lines = settled[0].curves(settled[1][part], vsb[part], vds[part])
-        else:
-            lines = _collapse_all(drive, length[part], vds[part], vsb[part])
-        shift = interpolant.threshold(length[part], vsb[part])
+    scaled, places = drive.scale(target), _place(drive, length, vds, vsb)
+    shift = interpolant.threshold(length, vsb)
+    factor = saturate(vds, interpolant.grid.condition.thermal_voltage)
+    found, low, high = np.full((3, target.size), np.nan)
+    if target.size >= _MANY:
+        found = Windows(drive, places, drive.sense * scaled, shift, factor).solve()
+    missed = np.zeros(target.size, dtype=bool)
+    left = places.sorted[0]
+    left = left[np.isnan(found[left])]
+    for start in range(0, left.size, _CHUNK):
+        part = left[start : start + _CHUNK]
         found[part], low[part], high[part] = _solve_chunk(
-            drive, scaled[part], lines, shift, vds[part]
+            drive, places.collapse(part), scaled[part], shift[part], factor[part]
         )
+        missed[part] = np.isnan(found[part])
     reach = (drive.unscale(low), drive.unscale(high))
     points = {"length": length, "vds": vds, "vsb": vsb}
-    refuse_targets(interpolant.grid.sweep, name, target, reach, points, np.isnan(found))
+    refuse_targets(interpolant.grid.sweep, name, target, reach, points, missed)
     return found
 
 
-def _sort_by_cell(interpolant: Interpolant, length: Array, vds: Array) -> Indices:
-    """Order points so that those of one cell of length and vds lie together."""
-    along, _ = interpolant.axes[0].locate(length_coordinate(length))
-    across, _ = interpolant.axes[2].locate(drain_coordinate(vds))
-    return np.lexsort((across, along))
-
-
-def _collapse_all(drive: Drive, length: Array, vds: Array, vsb: Array) -> Array:
-    """Collapse the splines over all four axes to curves along the gate axis."""
+def _place(drive: Drive, length: Array, vds: Array, vsb: Array) -> Places:
+    """Find points among the cells of the splines that a drive needs."""
+    settled = drive.interpolant.settle(drive.columns, length)
+    if settled is not None:
+        return Places(settled[0], *settled[0].cells(settled[1], vsb, vds))
     bulk = bulk_coordinate(vsb, float(drive.interpolant.grid.sweep.vsb[0]))
     stack = drive.interpolant.stack(drive.columns)
-    return stack.curves(length_coordinate(length), bulk, drain_coordinate(vds))
+    return Places(stack, *stack.cells(length_coordinate(length), bulk, drain_coordinate(vds)))
 
 
 def _solve_chunk(
-    drive: Drive, target: Array, lines: Array, shift: Array, vds: Array
+    drive: Drive, lines: Array, target: Array, shift: Array, factor: Array
 ) -> tuple[Array, Array, Array]:
-    """Solve on curves along the gate axis, given by their coefficients and thresholds."""
-    spline, sweep = drive.interpolant, drive.interpolant.grid.sweep
-    gate = spline.axes[3]
-    factor = saturate(vds, spline.grid.condition.thermal_voltage)
-
-    nodes = (lines[:, :-2] + 4 * lines[:, 1:-1] + lines[:, 2:]) / 6
+    """Solve on whole curves, shape (quantities, n, n_gate); give the roots and the range."""
+    gate, sweep = drive.interpolant.axes[3], drive.interpolant.grid.sweep
+    nodes = (lines[..., :-2] + 4 * lines[..., 1:-1] + lines[..., 2:]) / 6
     curve = drive.values(nodes, factor[:, None])
     ends = [
         np.clip(vgs - shift, gate.breaks[0], gate.breaks[-1])
         for vgs in (sweep.vgs[0], sweep.vgs[-1])
     ]
-    places = np.broadcast_to(gate.points, curve.shape)
     first, last = (drive.values(_read_lines(gate, lines, end), factor) for end in ends)
-    curve = np.where(places <= ends[0][:, None], first[:, None], curve)
-    curve = np.where(places >= ends[1][:, None], last[:, None], curve)
-    places = np.clip(places, ends[0][:, None], ends[1][:, None])
+    curve = np.where(gate.points <= ends[0][:, None], first[:, None], curve)
+    curve = np.where(gate.points >= ends[1][:, None], last[:, None], curve)
     cell, target, low, high = bracket(drive.sense, curve, target)
-    rows = np.arange(target.size)
     step = gate.breaks[1] - gate.breaks[0]
-    powers = np.einsum("cp,ncq->pnq", gate.basis[0], _pick(lines, cell))
-
-    def evaluate(places: Array) -> tuple[Array, Array]:
-        """Scaled drive and slope at places of shape (n,) within the cells found."""
-        t = ((places - gate.breaks[cell]) / step)[:, None]
-        values = ((powers[3] * t + powers[2]) * t + powers[1]) * t + powers[0]
-        tilts = ((3 * powers[3] * t + 2 * powers[2]) * t + powers[1]) / step
-        return drive.values(values, factor), drive.slopes(values, tilts, factor)
-
-    root = solve_newton(evaluate, target, places[rows, cell], places[rows, cell + 1], drive.sense)
-    return np.where(np.isnan(target), np.nan, root + shift), low, high
+    bracketed = [
+        (np.clip(gate.points[cell + side], *ends) - gate.breaks[cell]) / step for side in (0, 1)
+    ]
+    root = solve_span(drive, gate, cell, pick_stencil(lines, cell), factor, target, bracketed)
+    return root + shift, low, high
 
 
 def _read_lines(gate: SplineAxis, lines: Array, places: Array) -> Array:
     """Evaluate each curve, of coefficients along the gate axis, at a place of its own."""
     span, place = gate.locate(places)
-    return np.asarray(np.einsum("ncq,nc->nq", _pick(lines, span), gate.weights(span, place)))
-
-
-def _pick(lines: Array, span: Indices) -> Array:
-    """Take the coefficients that bear on one span of each curve."""
-    count, size, _ = lines.shape
-    first = size * np.arange(count) + span
-    return np.asarray(lines.reshape(count * size, -1)[first[:, None] + np.arange(4)])
+    return np.asarray(np.einsum("qnc,nc->qn", pick_stencil(lines, span), gate.weights(span, place)))
 
 
 def solve_diode(
@@ -184,7 +167,7 @@ def solve_diode(
     def evaluate(vgs: Array, rows: NDArray[np.intp]) -> Array:
         bias = (length[rows], vgs, vgs, vsb[rows])
         values = interpolant.tables(drive.columns, *bias)
-        return drive.values(values, saturate(vgs, thermal_voltage))
+        return drive.values(values.T, saturate(vgs, thermal_voltage))
 
     first = max(float(sweep.vgs[0]), float(sweep.vds[0]), 1e-3)
     samples = np.linspace(first, min(float(sweep.vgs[-1]), float(sweep.vds[-1])), _SAMPLES)

@@ -7,17 +7,20 @@ so that the current stays smooth everywhere; a mask tells which points lie insid
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gmid.device.capacitance import assemble_matrix
 from gmid.device.channel import saturate
-from gmid.device.collapsed import OFF_SLOPE, ON_SLOPE, Place
+from gmid.device.collapsed import OFF_SLOPE, ON_SLOPE, Collapsed, Place
 from gmid.device.interpolant import Interpolant
 from gmid.device.restoring import restore
+from gmid.device.small_signal import SmallSignal
 from gmid.device.spline import Array, Indices
+from gmid.errors import UnknownName
 
 EDGE = 1e-6
 """How far outside the table a point still counts as inside [V]: rounding of a solver."""
@@ -29,35 +32,6 @@ _LARGEST_EXPONENT = 300.0
 
 _SWAPPED = np.array([0, 2, 1, 3])
 """Gate, drain, source, bulk after drain and source have changed places."""
-
-
-@dataclass(frozen=True, eq=False)
-class SmallSignal:
-    """Small-signal values of unit transistors at their bias.
-
-    Parameters
-    ----------
-    gm, gds, gmb : ndarray, shape (...)
-        Derivatives of the current into the drain by vgs, vds and -vsb [S].
-    capacitance : ndarray, shape (..., 4, 4)
-        dQi/dVj [F] with its true signs, in the order gate, drain, source, bulk.
-    noise_thermal, noise_flicker : ndarray, shape (...)
-        Densities of the drain current's noise [A^2/Hz], the flicker part at 1 Hz; zero where
-        the table has none.
-
-    Examples
-    --------
-    >>> zero = np.zeros(2)
-    >>> SmallSignal(zero, zero, zero, np.zeros((2, 4, 4)), zero, zero).gm.shape
-    (2,)
-    """
-
-    gm: Array
-    gds: Array
-    gmb: Array
-    capacitance: Array
-    noise_thermal: Array
-    noise_flicker: Array
 
 
 @dataclass(frozen=True, eq=False)
@@ -83,6 +57,7 @@ class DeviceModel:
 
     interpolant: Interpolant
     length: Array
+    _made: dict[tuple[str, ...], Collapsed] = field(default_factory=dict, init=False, repr=False)
 
     def current_and_derivatives(
         self, vgs: ArrayLike, vds: ArrayLike, vsb: ArrayLike, which: ArrayLike = 0
@@ -117,15 +92,15 @@ class DeviceModel:
         turned, bias = _turn(bias)
         within = self._clip(bias)
         beyond = [here - there for here, there in zip(bias, within, strict=True)]
-        core = self.interpolant.collapse(("id",), self.length)
+        core = self.splines(("id",))
         place = core.locate(index, *within, beyond[2])
         q, *slopes = core.gradient(place)
         gate_slope = np.where(beyond[0] < 0, OFF_SLOPE, ON_SLOPE)
         q = q + gate_slope * beyond[0] + DRAIN_SLOPE * beyond[1]
         slopes[0] = np.where(beyond[0] == 0, slopes[0], gate_slope)
         slopes[1] = np.where(beyond[1] == 0, slopes[1], DRAIN_SLOPE)
-        found = self._current(q, slopes, bias[1])
-        if self.interpolant.grid.has_rest:
+        found = self._current(q, slopes, bias[1], self.thermal_voltage(index))
+        if self.has_rest:
             found += self._rest(place, beyond[0])
         found = _turn_back(found, turned)
         inside = np.all([np.abs(far) <= EDGE for far in beyond], axis=0)
@@ -171,7 +146,7 @@ class DeviceModel:
         turned, bias = _turn(bias)
         within = self._clip(bias)
         names = ["id", *(name for name in sweep.values if name not in ("id", "vth", "vdsat"))]
-        spline = self.interpolant.collapse(names, self.length)
+        spline = self.splines(names)
         table = spline.values(spline.locate(index, *within))
         raw = {name: table[:, column] for column, name in enumerate(names)}
         found = restore(raw, within[1], None, self.interpolant.grid.condition.thermal_voltage)
@@ -187,6 +162,128 @@ class DeviceModel:
             matrix.reshape(*shape, 4, 4), *(part.reshape(shape) for part in noise),
         )  # fmt: skip
 
+    def vdsat(self, vgs: ArrayLike, vds: ArrayLike, vsb: ArrayLike, which: ArrayLike = 0) -> Array:
+        """Read the edge of saturation.
+
+        Parameters
+        ----------
+        vgs, vds, vsb : array_like, shape (...)
+            Voltages [V] as for `small_signal`.
+        which : array_like of int
+            Which of the model's lengths.
+
+        Returns
+        -------
+        ndarray, shape (...)
+            [V].
+
+        Raises
+        ------
+        UnknownName
+            If the table lacks it.
+
+        Examples
+        --------
+        >>> from gmid.device.device import Device
+        >>> from gmid.device.example import example_sweep
+        >>> Device(example_sweep()).model(1e-6).vdsat(0.7, 0.9, 0.0)
+        Traceback (most recent call last):
+        ...
+        gmid.errors.UnknownName: nmos tt/27 has no vdsat. Import it with vdsat.
+        """
+        sweep = self.interpolant.grid.sweep
+        if "vdsat" not in sweep:
+            raise UnknownName(f"{sweep.label} has no vdsat.", hint="Import it with vdsat.")
+        shape, index, bias = _flatten(which, vgs, vds, vsb)
+        within = self._clip(_turn(bias)[1])
+        spline = self.splines(("vdsat",))
+        return spline.values(spline.locate(index, *within))[:, 0].reshape(shape)
+
+    def covers(
+        self, vgs: ArrayLike, vds: ArrayLike, vsb: ArrayLike, which: ArrayLike = 0
+    ) -> NDArray[np.bool_]:
+        """Tell where the table covers a bias.
+
+        Parameters
+        ----------
+        vgs, vds, vsb : array_like, shape (...)
+            Voltages [V]; below vds = 0 drain and source change places.
+        which : array_like of int
+            Which of the model's lengths.
+
+        Returns
+        -------
+        ndarray of bool, shape (...)
+            True inside.
+
+        Examples
+        --------
+        >>> from gmid.device.device import Device
+        >>> from gmid.device.example import example_sweep
+        >>> Device(example_sweep()).model(1e-6).covers(0.7, [0.9, 5.0], 0.0)
+        array([ True, False])
+        """
+        shape, _, bias = _flatten(which, vgs, vds, vsb)
+        bias = _turn(bias)[1]
+        beyond = [here - there for here, there in zip(bias, self._clip(bias), strict=True)]
+        inside = np.all([np.abs(far) <= EDGE for far in beyond], axis=0)
+        return np.asarray(inside).reshape(shape)
+
+    def part(self, which: int) -> tuple[DeviceModel, int]:
+        """Give the model of one condition that a place belongs to, and the place in it: itself.
+
+        Parameters
+        ----------
+        which : int
+            Which of the model's lengths.
+
+        Returns
+        -------
+        model : DeviceModel
+            This one.
+        which : int
+            As given.
+        """
+        return self, which
+
+    def splines(self, names: Sequence[str]) -> Collapsed:
+        """Give the splines at the lengths of the model.
+
+        Parameters
+        ----------
+        names : sequence of str
+            Quantities of the sweep, and ``rest``; alone, that has no vds.
+
+        Returns
+        -------
+        Collapsed
+            Over the three voltages.
+        """
+        key = tuple(names)
+        if key not in self._made:
+            self._made[key] = self.interpolant.collapse(key, self.length)
+        return self._made[key]
+
+    @property
+    def has_rest(self) -> bool:
+        """Whether any current flows at vds = 0."""
+        return self.interpolant.grid.has_rest
+
+    def thermal_voltage(self, which: Indices) -> Array | float:
+        """Give kT/q.
+
+        Parameters
+        ----------
+        which : ndarray of int, shape (n,)
+            Which of the model's lengths.
+
+        Returns
+        -------
+        float
+            The same for all [V].
+        """
+        return self.interpolant.grid.condition.thermal_voltage
+
     def _clip(self, bias: tuple[Array, Array, Array]) -> tuple[Array, Array, Array]:
         sweep = self.interpolant.grid.sweep
         axes = (sweep.vgs, sweep.vds, sweep.vsb)
@@ -195,9 +292,10 @@ class DeviceModel:
         )
         return vgs, vds, vsb
 
-    def _current(self, q: Array, slopes: list[Array], vds: Array) -> Array:
+    def _current(
+        self, q: Array, slopes: list[Array], vds: Array, thermal_voltage: Array | float
+    ) -> Array:
         """Turn q and its derivatives into the channel's current and derivatives."""
-        thermal_voltage = self.interpolant.grid.condition.thermal_voltage
         peak = np.exp(np.minimum(q, _LARGEST_EXPONENT))
         current = peak * saturate(vds, thermal_voltage)
         found = np.stack((current, *(current * slope for slope in slopes)))
@@ -206,11 +304,12 @@ class DeviceModel:
 
     def _rest(self, place: Place, past: Array) -> Array:
         """Give the current at vds = 0, which does not know vds, and its derivatives."""
-        drains, gates = self.interpolant.axes[2].size, self.interpolant.axes[3].size
+        spline = self.splines(("id",))
+        drains, gates = spline.vds.size, spline.gate.size
         line, gate = place.first // (drains * gates), place.first % gates
         one, none = np.ones((gate.size, 1)), np.zeros((gate.size, 1))
         steep = np.where(place.beyond[:, None] == 0, place.gate_slope, 0.0)
-        found = self.interpolant.collapse(("rest",), self.length).gradient(
+        found = self.splines(("rest",)).gradient(
             Place(
                 line * gates + gate, one, place.gate, place.vsb, none, steep, place.vsb_slope,
                 place.threshold_slope, np.zeros(gate.size),

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
-from typing import Any
+from functools import lru_cache
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -12,12 +13,21 @@ from numpy.typing import ArrayLike
 from gmid.device.spline import Array
 from gmid.errors import UnknownName, UsageFault, advise
 from gmid.nomenclature import QUANTITIES
-from gmid.quantity import format_quantity
+
+if TYPE_CHECKING:
+    from gmid.sweep.listing import DataFrame
 
 Compute = Callable[["OperatingPoint", Sequence[str]], Mapping[str, Array]]
 
 BIAS = ("length", "width", "count", "vgs", "vds", "vsb")
 """Fields that every operating point has from the start."""
+
+_BIAS = frozenset(BIAS)
+
+
+@lru_cache(maxsize=64)
+def _gather(names: tuple[str, ...]) -> frozenset[str]:
+    return frozenset(names)
 
 
 class NoSuchField(UnknownName, AttributeError):
@@ -69,6 +79,31 @@ class OperatingPoint:
     compute: Compute
     _found: dict[str, Array] = field(default_factory=dict, repr=False)
 
+    @classmethod
+    def take(cls, fields: dict[str, Any]) -> OperatingPoint:
+        """Make an operating point of all its fields, faster than by its constructor.
+
+        Parameters
+        ----------
+        fields : dict
+            Every parameter, and ``_found``, a dict; it becomes the point's own.
+
+        Returns
+        -------
+        OperatingPoint
+            Just as the constructor makes it.
+
+        Examples
+        --------
+        >>> names = ("label", "length", "vgs", "vds", "vsb", "count", "unit_width", "known")
+        >>> fields = dict.fromkeys(names, 1.0) | {"compute": None, "_found": {"id": 1e-6}}
+        >>> float(OperatingPoint.take(fields | {"known": ("id",)}).id)
+        1e-06
+        """
+        point = cls.__new__(cls)
+        object.__setattr__(point, "__dict__", fields)
+        return point
+
     @property
     def shape(self) -> tuple[int, ...]:
         """Shape that every field has."""
@@ -115,19 +150,30 @@ class OperatingPoint:
         >>> sorted(point.read(["id", "vgs"]))
         ['id', 'vgs']
         """
-        for name in names:
-            if name not in self.known and name not in BIAS:
-                raise NoSuchField(
-                    f"{self.label} has no quantity {name!r}.", hint=advise(name, self.fields)
-                )
-        missing = [name for name in names if name not in self._found and name not in BIAS]
+        found = self._found
+        missing = names
+        if found or not _BIAS.isdisjoint(names):
+            missing = [name for name in names if name not in found and name not in _BIAS]
         if missing:
-            self._found.update(self.compute(self, missing))
+            self._check(missing)
+            found.update(self.compute(self, missing))
+        if isinstance(self.count, np.float64) and self.count == 1.0:
+            if _BIAS.isdisjoint(names):
+                return {name: found[name] for name in names}
+            return {name: found[name] if name in found else self._scaled(name) for name in names}
         return {name: self._scaled(name) for name in names}
 
+    def _check(self, names: Sequence[str]) -> None:
+        """Refuse quantities that cannot be computed."""
+        if (vars(self).get("_names") or _gather(self.known)).issuperset(names):
+            return
+        name = next(name for name in names if name not in self.known)
+        raise NoSuchField(f"{self.label} has no quantity {name!r}.", hint=advise(name, self.fields))
+
     def _scaled(self, name: str) -> Array:
-        if name in BIAS:
-            return np.asarray(getattr(self, name))[()]
+        if name in _BIAS:
+            held: Array = getattr(self, name)
+            return held if isinstance(held, np.float64) else np.asarray(held)[()]
         value = self._found[name]
         return np.multiply(value, self.count) if QUANTITIES[name].scaling else value
 
@@ -220,14 +266,33 @@ class OperatingPoint:
         """
         return self.read(self.fields)
 
+    def to_frame(self) -> DataFrame:
+        """Read every field into a data frame.
+
+        Returns
+        -------
+        DataFrame
+            One row a point, last axis fastest; SI, with ``attrs["units"]`` by column and
+            ``attrs["label"]`` the device and condition.
+
+        Examples
+        --------
+        >>> from gmid.device.device import Device
+        >>> from gmid.device.example import example_sweep
+        >>> point = Device(example_sweep()).at(length=[1e-6, 2e-6], vds=0.6, gm_over_id=15)
+        >>> point.to_frame()[["length", "vgs"]].round(9).to_dict("list")["length"]
+        [1e-06, 2e-06]
+        """
+        from gmid.device.telling import frame_point
+
+        return frame_point(self)
+
     def __repr__(self) -> str:
-        if self.shape:
-            return f"OperatingPoint({self.label}: {self.shape}; {' '.join(self.fields)})"
-        shown = ("length", "count", "vgs", "vds", "vsb", "id")
-        more = ("gm_over_id", "vdsat", "intrinsic_gain", "ft")
-        values = self.read([name for name in (*shown, *more) if name in self.fields])
-        texts = [
-            f"{name} {format_quantity(float(value), QUANTITIES[name].unit)}"
-            for name, value in values.items()
-        ]
-        return f"OperatingPoint({self.label}: {', '.join(texts)})"
+        from gmid.device.telling import spell_point
+
+        return spell_point(self)
+
+    def _repr_html_(self) -> str:
+        from gmid.device.telling import list_point
+
+        return list_point(self)

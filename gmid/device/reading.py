@@ -104,6 +104,41 @@ def quintic_reading(points: Array, places: Array) -> Reading:
     return Reading(pairs[0], pairs[1])
 
 
+def read_quintic(points: Array, places: Array, values: Array, slopes: Array) -> Array:
+    """Read the quintic splines of `quintic_reading` and their slopes, many lines at once.
+
+    Parameters
+    ----------
+    points : ndarray, shape (n,)
+        Strictly rising, at least four.
+    places : ndarray, shape (k, ..., m)
+        Where to read, for each group of lines.
+    values, slopes : ndarray, shape (k, ..., lines, n)
+        What the lines pass through.
+
+    Returns
+    -------
+    ndarray, shape (2, k, ..., lines, m)
+        Values and slopes.
+
+    Examples
+    --------
+    >>> points, places = np.array([0.0, 1.0, 2.0, 4.0]), np.array([[3.0]])
+    >>> lines = (points**4)[None, None], (4 * points**3)[None, None]
+    >>> read_quintic(points, places, *lines).round(6).ravel()
+    array([ 81., 108.])
+    """
+    by_values, by_slopes = bend_operators(points)
+    bends = values @ by_values.T + slopes @ by_slopes.T
+    nodes = np.concatenate((values, slopes, bends), axis=-1)
+    found = np.empty((2, *values.shape[:-1], places.shape[-1]))
+    for group, there in enumerate(places):  # one by one, or fresh memory costs more than the sums
+        for kind, weights in enumerate(_weigh(points, there, _QUINTIC)):
+            rows = np.concatenate(weights, axis=-1)
+            np.matmul(nodes[group], rows.swapaxes(-1, -2), out=found[kind, group])
+    return found
+
+
 def _weigh(points: Array, places: Array, basis: Array) -> tuple[list[Array], list[Array]]:
     """Weigh values and derivatives at all points, for the curve and for its slope."""
     within = np.clip(places, points[0], points[-1])
@@ -111,9 +146,13 @@ def _weigh(points: Array, places: Array, basis: Array) -> tuple[list[Array], lis
     width = np.diff(points)[cell]
     beyond, place = places - within, (within - points[cell]) / width
     order = basis.shape[1]
-    powers = place[..., None] ** np.arange(order)
-    steep = np.arange(order) * place[..., None] ** np.maximum(np.arange(order) - 1, 0)
-    scale = width[..., None] ** np.repeat(np.arange(order // 2), 2)
+    powers, steep, scale = np.ones((3, *place.shape, order))
+    steep[..., 0] = 0.0
+    for power in range(1, order):
+        np.multiply(powers[..., power - 1], place, out=powers[..., power])
+        np.multiply(powers[..., power - 1], power, out=steep[..., power])
+    for half in range(2, order):
+        np.multiply(scale[..., half - 2], width, out=scale[..., half])
     tilts = (steep @ basis.T) * scale / width[..., None]
     weights = (powers @ basis.T) * scale + tilts * beyond[..., None]
     return _spread(weights, cell, points.size), _spread(tilts, cell, points.size)

@@ -52,11 +52,33 @@ def bracket(
     slack = _ROUNDING * np.maximum(np.abs(low), np.abs(high))
     known = (goal >= low - slack) & (goal <= high + slack)
     goal = np.where(known, np.clip(goal, low, high), low)
-    crossing = (rising[:, :-1] <= goal[:, None]) & (rising[:, 1:] >= goal[:, None])
-    crossing &= on[:, :-1]
-    cell = crossing.shape[1] - 1 - np.argmax(crossing[:, ::-1], axis=1)
+    cell = find_last(np.where(on, rising, np.inf), goal)
     ends = np.sort(np.stack((sense * low, sense * high)), axis=0)
     return cell, np.where(known, sense * goal, np.nan), ends[0], ends[1]
+
+
+def find_last(rising: Array, goal: Array) -> NDArray[np.intp]:
+    """Find the last cell in which each curve rises through its goal.
+
+    Parameters
+    ----------
+    rising : ndarray, shape (n, points)
+        Values along each curve.
+    goal : ndarray, shape (n,)
+        What is sought.
+
+    Returns
+    -------
+    ndarray of int, shape (n,)
+        The crossing lies between this point and the next; the last cell where there is none.
+
+    Examples
+    --------
+    >>> find_last(np.array([[0.0, 2.0, 1.0, 3.0, 4.0]]), np.array([1.5]))
+    array([2])
+    """
+    crossing = (rising[:, :-1] <= goal[:, None]) & (rising[:, 1:] >= goal[:, None])
+    return np.asarray(crossing.shape[1] - 1 - np.argmax(crossing[:, ::-1], axis=1))
 
 
 def solve_newton(
@@ -65,6 +87,8 @@ def solve_newton(
     low: Array,
     high: Array,
     sense: float,
+    *,
+    start: Array | None = None,
 ) -> Array:
     """Solve within brackets by Newton's steps, halving where one would leave the bracket.
 
@@ -78,6 +102,8 @@ def solve_newton(
         Brackets.
     sense : float
         1 where the functions rise, -1 where they fall.
+    start : ndarray, shape (n,), keyword-only
+        Where to begin, within the brackets; in their middle by default.
 
     Returns
     -------
@@ -91,7 +117,7 @@ def solve_newton(
     """
     low, high = low.copy(), high.copy()
     goal = np.where(np.isnan(target), 0.0, target)
-    root = 0.5 * (low + high)
+    root = 0.5 * (low + high) if start is None else start
     for _ in range(_ITERATIONS):
         value, slope = evaluate(root)
         error = value - goal
@@ -103,7 +129,7 @@ def solve_newton(
         good = np.isfinite(trial) & (trial >= low) & (trial <= high)
         done = np.abs(error) <= _RESIDUAL * np.maximum(np.abs(goal), 1e-3)
         done |= ((high - low) < 1e-16) | np.isnan(target)
-        root = np.where(done, root, np.where(good, trial, 0.5 * (low + high)))
+        root = np.where(good, trial, np.where(done, root, 0.5 * (low + high)))
         if done.all():
             break
     return root

@@ -10,7 +10,7 @@ from __future__ import annotations
 from bisect import bisect_right
 from collections.abc import Sequence
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 from typing import Any
 
 import numpy as np
@@ -261,6 +261,18 @@ def natural_axis(points: Array) -> SplineAxis:
     >>> natural_axis(np.array([0.0, 1.0, 2.0])).order
     3
     """
+    return _make_natural(np.asarray(points, dtype=np.float64).tobytes())
+
+
+@lru_cache(maxsize=64)
+def _make_natural(raw: bytes) -> SplineAxis:
+    """Make an axis once for all conditions that share it; nobody may change it."""
+    axis = _solve_natural(np.frombuffer(raw))
+    axis.operator.flags.writeable = axis.basis.flags.writeable = False
+    return axis
+
+
+def _solve_natural(points: Array) -> SplineAxis:
     degree = min(3, points.size - 1)
     if degree == 0:
         breaks = np.array([points[0] - 0.5, points[0] + 0.5])
@@ -301,14 +313,21 @@ def uniform_axis(start: float, stop: float, spans: int) -> SplineAxis:
     0.027
     """
     points = np.linspace(start, stop, spans + 1)
+    basis = np.broadcast_to(_UNIFORM, (spans, 4, 4))
+    return SplineAxis(points, points, basis, _solve_uniform(spans), uniform=True)
+
+
+@lru_cache(maxsize=32)
+def _solve_uniform(spans: int) -> Array:
+    """Make the operator of so many equal spans; nobody may change it."""
     rows = np.zeros((spans + 3, spans + 3))
     here = np.arange(spans + 1)
     for offset, weight in enumerate(_UNIFORM[:3, 0]):
         rows[here + 1, here + offset] = weight
     rows[0, :5] = rows[-1, -5:] = (1.0, -4.0, 6.0, -4.0, 1.0)
-    operator = np.asarray(np.linalg.inv(rows)[:, 1:-1], dtype=np.float64)
-    basis = np.broadcast_to(_UNIFORM, (spans, 4, 4))
-    return SplineAxis(points, points, basis, operator, uniform=True)
+    operator = np.ascontiguousarray(np.linalg.inv(rows)[:, 1:-1])
+    operator.flags.writeable = False
+    return operator
 
 
 def _span_bases(knots: Array, degree: int) -> Array:

@@ -1,20 +1,21 @@
 """Spline coefficients of several quantities over all four axes.
 
-Two ways lead down from here: to values at scattered points, and to the curve along the gate
-axis at given (length, vds, vsb).  Points are grouped by the cell they fall in, so that each
-group is one matrix product.
+Two ways lead down from here: to values at scattered points, and to curves along the gate
+axis at given (length, vsb, vds), see `gmid.device.windows`.  Points are grouped by the cell
+they fall in, so that each group is one matrix product.
 """
 
 from __future__ import annotations
 
 from bisect import bisect_right
+from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import groupby
 
 import numpy as np
 
-from gmid.device.cells import group_points, multiply_weights, place_points, sort_cells
-from gmid.device.spline import Array, SplineAxis
+from gmid.device.cells import multiply_weights, place_points, slide, sort_cells
+from gmid.device.spline import Array, Indices, SplineAxis
 
 _TOGETHER = 512
 """Points whose partial sums are held at a time, so that they stay in the cache."""
@@ -109,8 +110,13 @@ class Stack:
                 np.dot(outer[here], row[:, k * size : (k + c) * size], out=lines[here])
         return np.asarray(np.matmul(inner[:, None], lines.reshape(*inner.shape, -1))[:, 0])
 
-    def curves(self, length: Array, vsb: Array, vds: Array) -> Array:
-        """Collapse to coefficients along the gate axis alone.
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """Number of cells along length, vsb and vds."""
+        return (self.length.spans, self.vsb.spans, self.vds.spans)
+
+    def cells(self, length: Array, vsb: Array, vds: Array) -> tuple[list[Indices], list[Array]]:
+        """Find the cells of length, vsb and vds in which points lie.
 
         Parameters
         ----------
@@ -119,29 +125,59 @@ class Stack:
 
         Returns
         -------
-        ndarray, shape (n, n_gate, quantities)
-            Coefficients of one curve for each point and quantity.
+        spans : list of ndarray of int, shape (n,)
+            Span along length, vsb and vds.
+        weights : list of ndarray, shape (n, order)
+            Weights along each, for the rows of `block`.
 
         Examples
         --------
         >>> from gmid.device.spline import natural_axis, uniform_axis
         >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
         >>> stack = Stack(one, one, one, gate, np.ones((1, 1, 7, 1, 1)))
-        >>> stack.curves(np.zeros(2), np.zeros(2), np.zeros(2)).shape
-        (2, 7, 1)
+        >>> stack.cells(np.zeros(1), np.zeros(1), np.zeros(1))[0]
+        [array([0]), array([0]), array([0])]
         """
-        axes = (self.length, self.vds, self.vsb)
-        spans, weights = place_points(axes, (length, vds, vsb))
-        moved = self.coefficients.transpose(0, 1, 3, 2, 4)
-        found = np.empty((length.size, *moved.shape[3:]))
-        for members, corner in group_points(tuple(axis.spans for axis in axes), spans):
-            block = moved[
-                tuple(slice(at, at + axis.order) for at, axis in zip(corner, axes, strict=True))
-            ]
-            outer = multiply_weights([weight[members] for weight in weights])
-            product = outer @ block.reshape(outer.shape[1], -1)
-            found[members] = product.reshape(-1, *moved.shape[3:])
-        return found
+        return place_points((self.length, self.vsb, self.vds), (length, vsb, vds))
+
+    def block(self, corner: Sequence[int], gates: slice = slice(None)) -> Array:
+        """Give the coefficients that bear on one cell of length, vsb and vds.
+
+        Parameters
+        ----------
+        corner : sequence of int
+            Its spans.
+        gates : slice
+            Which of the coefficients along the gate axis.
+
+        Returns
+        -------
+        ndarray, shape (products of the weights, quantities, n_gate)
+            Coefficients.
+
+        Examples
+        --------
+        >>> from gmid.device.spline import natural_axis, uniform_axis
+        >>> one, gate = natural_axis(np.zeros(1)), uniform_axis(0.0, 1.0, 4)
+        >>> Stack(one, one, one, gate, np.ones((1, 1, 7, 1, 2))).block([0, 0, 0]).shape
+        (1, 2, 7)
+        """
+        i, m, j = corner
+        a, d, b = self.length.order, self.vsb.order, self.vds.order
+        block = self.coefficients[i : i + a, j : j + b, gates, m : m + d]
+        return block.transpose(0, 3, 1, 4, 2).reshape(a * d * b, block.shape[-1], -1)
+
+    def extremes(self) -> tuple[Array, Array]:
+        """Give the least and largest coefficient that bear on each cell.
+
+        Returns
+        -------
+        least, most : ndarray, shape (*shape, gate spans, quantities)
+            Bounds of the splines.
+        """
+        axes = {0: self.length, 1: self.vds, 3: self.vsb, 2: self.gate}
+        low, high = (slide(self.coefficients, axes, pick) for pick in (np.minimum, np.maximum))
+        return low.transpose(0, 3, 1, 2, 4), high.transpose(0, 3, 1, 2, 4)
 
     def __repr__(self) -> str:
         *sizes, count = self.coefficients.shape

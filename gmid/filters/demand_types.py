@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -19,6 +19,9 @@ from gmid.filters.noise import FilterNoise
 from gmid.filters.realisation import Realisation
 from gmid.filters.spec import FilterSpec, Tolerance
 from gmid.network.pencil import FloatArray
+
+if TYPE_CHECKING:
+    from gmid.sweep.listing import DataFrame
 
 
 @dataclass(frozen=True)
@@ -118,6 +121,11 @@ class Demand:
             f"{name} {one.value:.4g} {one.unit}".rstrip() for name, one in self.requirements.items()
         )
         return f"Demand({self.position}: {parts})"
+
+    def _repr_html_(self) -> str:
+        from gmid.filters.demand_listing import list_demand
+
+        return list_demand(self)
 
 
 @dataclass(frozen=True, eq=False)
@@ -279,3 +287,20 @@ class FilterDemands:
             f"FilterDemands({len(self.demands)} amplifiers, sum of gm {self.gm_sum:.4g} S, "
             f"bound by {self.point.worst.binding} {self.point.corner})"
         )
+
+    def to_frame(self) -> DataFrame:
+        """List every demand of every amplifier as a data frame.
+
+        Returns
+        -------
+        DataFrame
+            Columns ``amplifier section demand value unit because``, SI.
+        """
+        from gmid.filters.demand_listing import frame_demands
+
+        return frame_demands(self)
+
+    def _repr_html_(self) -> str:
+        from gmid.filters.demand_listing import list_demands
+
+        return list_demands(self)

@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 import numpy as np
-from numpy.typing import ArrayLike
 
 from gmid.errors import UsageFault
-from gmid.network.pencil import ComplexArray, solve_pencil
+from gmid.network.pencil import ComplexArray, FloatArray
 from gmid.network.response import Transfer
+from gmid.network.scanning import ScannedResponse
 from gmid.network.structure import Structure
 
 
@@ -50,7 +50,7 @@ def break_loop(network: Structure, probe: str) -> Transfer:
     return Transfer(network, probe, drive, reference=gate, factor=-1.0)
 
 
-class DoubleInjection:
+class DoubleInjection(ScannedResponse):
     """Middlebrook's loop gain, exact at any point of a loop without reverse transmission.
 
     A voltage and a current are injected in turn at the same place; with the two partial
@@ -81,36 +81,22 @@ class DoubleInjection:
     """
 
     def __init__(self, network: Structure, probe: str) -> None:
-        self.network = network
+        super().__init__(network)
         self.probe = probe
         self.drive, self.gate = _find_ends(network, probe)
 
-    def __call__(self, frequency: ArrayLike) -> ComplexArray:
-        """Compute the loop gain.
-
-        Parameters
-        ----------
-        frequency : array_like of float, shape (nf,) or (..., nf) or ()
-            [Hz].
-
-        Returns
-        -------
-        ndarray of complex, shape (..., nf)
-            Without the frequency axis for a single number.
-        """
+    def _ask(self) -> tuple[FloatArray, FloatArray]:
         net = self.network
-        s = 2j * np.pi * np.asarray(frequency, dtype=np.float64)
-        if s.size:
-            net.check(complex(s.ravel()[int(np.argmin(np.abs(s)))]))
         # second column: a current of 1 A into the gate, the probe at zero
         right = np.stack([net.drive(self.probe), net.observe(self.gate)], axis=-1)
         seen = [self.drive, self.gate, f"i({self.probe})"]
-        weights = np.stack([net.observe(name) for name in seen])
-        x = weights @ solve_pencil(net.assemble(), np.atleast_1d(s), right)
+        return right, np.stack([net.observe(name) for name in seen])
+
+    def _answer(self, found: ComplexArray) -> ComplexArray:
         # Tv = -a/b and Ti = -p/q, put in without dividing: q is zero at a gate without current
-        a, b, p, q = x[..., 0, 0], x[..., 1, 0], x[..., 2, 1], x[..., 2, 1] + 1.0
-        loop = (a * p - b * q) / (2.0 * b * q - a * q - b * p)
-        return np.asarray(loop[..., 0] if s.ndim == 0 else loop, dtype=np.complex128)
+        a, b, p = found[..., 0, 0], found[..., 1, 0], found[..., 2, 1]
+        q = p + 1.0
+        return np.asarray((a * p - b * q) / (2.0 * b * q - a * q - b * p), dtype=np.complex128)
 
     def __repr__(self) -> str:
         return f"DoubleInjection({self.probe} from {self.drive} to {self.gate}, {self.network!r})"

@@ -11,6 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TypeVar
 
 import numpy as np
@@ -30,41 +31,7 @@ _ROUNDS = 14
 _CLOSE = 1e-13
 _ACCEPTED = 1e-11
 _ITERATIONS = 80
-
-
-@dataclass(frozen=True, eq=False)
-class LoopMeasures:
-    """What is asked of a loop gain or of an amplifier that is to be put into a loop.
-
-    Parameters
-    ----------
-    dc_gain : ndarray of float, shape (...)
-        Gain at DC with its sign [-].
-    gbw : ndarray of float, shape (...)
-        First frequency at which the gain falls through 1 [Hz].
-    phase_margin : ndarray of float, shape (...)
-        180 degrees less the phase lag there, counted from DC [deg].
-    gain_margin : ndarray of float, shape (...)
-        Inverse of the gain where the lag reaches 180 degrees; infinite if it does not while
-        the gain is above a millionth of its largest value [-].
-
-    Examples
-    --------
-    >>> LoopMeasures(*np.array([1e3, 1e6, 60.0, np.inf]))
-    LoopMeasures(dc_gain=1000, gbw=1e+06, phase_margin=60, gain_margin=inf)
-    """
-
-    dc_gain: FloatArray
-    gbw: FloatArray
-    phase_margin: FloatArray
-    gain_margin: FloatArray
-
-    def __repr__(self) -> str:
-        parts = (
-            f"{name}={value:.6g}" if np.ndim(value) == 0 else f"{name}{np.shape(value)}"
-            for name, value in vars(self).items()
-        )
-        return f"LoopMeasures({', '.join(parts)})"
+_CHORDS = 5
 
 
 @dataclass(frozen=True, eq=False)
@@ -92,6 +59,48 @@ class _Survey:
         steps = _angle(values[..., 1:], values[..., :-1])
         first = _angle(values[..., :1], np.asarray(dc)[..., None].astype(np.complex128))
         return cls(f, values, np.cumsum(np.concatenate([first, steps], axis=-1), axis=-1))
+
+
+@dataclass(frozen=True, eq=False)
+class LoopMeasures:
+    """What is asked of a loop gain or of an amplifier that is to be put into a loop.
+
+    Parameters
+    ----------
+    dc_gain : ndarray of float, shape (...)
+        Gain at DC with its sign [-].
+    gbw : ndarray of float, shape (...)
+        First frequency at which the gain falls through 1 [Hz].
+    phase_margin : ndarray of float, shape (...)
+        180 degrees less the phase lag there, counted from DC [deg].
+
+    Examples
+    --------
+    >>> measure_loop(lambda f: 1e3 / (1 + 1j * f / 1e3))
+    LoopMeasures(dc_gain=1000, gbw=999999, phase_margin=90.0573)
+    """
+
+    dc_gain: FloatArray
+    gbw: FloatArray
+    phase_margin: FloatArray
+    _response: Response
+    _survey: _Survey
+
+    @cached_property
+    def gain_margin(self) -> FloatArray:
+        """Inverse of the gain where the lag reaches 180 degrees, of shape (...) [-].
+
+        Infinite if it does not while the gain is above a millionth of its largest value.
+        """
+        return _measure_gain_margin(self._response, self._survey)
+
+    def __repr__(self) -> str:
+        values = {name: getattr(self, name) for name in ("dc_gain", "gbw", "phase_margin")}
+        parts = (
+            f"{name}={value:.6g}" if np.ndim(value) == 0 else f"{name}{np.shape(value)}"
+            for name, value in values.items()
+        )
+        return f"LoopMeasures({', '.join(parts)})"
 
 
 def _sample(response: Response, band: tuple[float, float]) -> tuple[FloatArray, ComplexArray]:
@@ -123,8 +132,8 @@ def _call(response: Response, log_frequency: FloatArray) -> ComplexArray:
 def _locate(response: Response, excess: Excess, low: FloatArray, high: FloatArray) -> FloatArray:
     """Find log frequencies where an excess is zero, with few calls of the response itself.
 
-    Where there is a scan, the root of the scan is corrected by one secant step; only if that
-    leaves more than rounding is the bracket closed on the response itself.
+    Where there is a scan, its root is corrected by a few steps along its slope; only if those
+    leave more than rounding is the bracket closed on the response itself.
     """
 
     def exact(x: FloatArray) -> FloatArray:
@@ -135,9 +144,12 @@ def _locate(response: Response, excess: Excess, low: FloatArray, high: FloatArra
         x = _close_bracket(lambda x: excess(_call(scan, x)), low, high)
         there = high > low
         slope = (excess(_call(scan, x + 1e-4)) - excess(_call(scan, x - 1e-4))) / 2e-4
-        x = np.where(there & (slope != 0), x - exact(x) / np.where(slope == 0, 1.0, slope), x)
-        if not np.any(there & (np.abs(exact(x)) > _ACCEPTED)):
-            return x
+        rising = there & (slope != 0)
+        for _ in range(_CHORDS):
+            left = exact(x)
+            if not np.any(there & (np.abs(left) > _ACCEPTED)):
+                return x
+            x = np.where(rising, np.clip(x - left / np.where(rising, slope, 1.0), low, high), x)
     return _close_bracket(exact, low, high)
 
 
@@ -290,7 +302,7 @@ def find_bandwidth(
 def measure_loop(
     response: Response, *, band: tuple[float, float] = (1.0, 1e12), sign: int | None = None
 ) -> LoopMeasures:
-    """Measure DC gain, unity-gain frequency, phase margin and gain margin in one survey.
+    """Measure DC gain, unity-gain frequency and margins in one survey.
 
     Parameters
     ----------
@@ -326,7 +338,7 @@ def measure_loop(
     lag = _pick(survey.phase, index) + _angle(_call(response, x), start)
     margin = np.where(np.isnan(gbw), np.nan, 180.0 + np.rad2deg(lag))
     dc = np.broadcast_to(dc, batch).copy()
-    return LoopMeasures(dc, gbw, margin, _measure_gain_margin(response, survey))
+    return LoopMeasures(dc, gbw, margin, response, survey)
 
 
 def _measure_gain_margin(response: Response, survey: _Survey) -> FloatArray:

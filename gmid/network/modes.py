@@ -20,22 +20,25 @@ from gmid.network.structure import Output, Source, Structure
 
 _RANK = 1e-12
 
+_TOGETHER = 1 << 20
+"""Numbers held at a time while modes are summed."""
+
 
 @dataclass(frozen=True, eq=False)
 class Modes:
-    """A transfer as a sum of modes, ``sum residues / (1 + s times)``.
+    """Transfers as sums of modes, ``sum residues / (1 + s times)``.
 
     Parameters
     ----------
     times : ndarray of complex, shape (..., n)
         Time constants, ``-1/pole``; zero for what follows at once [s].
-    residues : ndarray of complex, shape (..., n)
-        Share of each mode in the transfer at DC.
+    residues : ndarray of complex, shape (..., n, outputs, sources)
+        Share of each mode in each transfer at DC.
 
     Examples
     --------
-    >>> one = Modes(np.array([1e-6 + 0j]), np.array([2.0 + 0j]))
-    >>> one([0.0, 1e6j])
+    >>> one = Modes(np.array([1e-6 + 0j]), np.array([[[2.0 + 0j]]]))
+    >>> one([0.0, 1e6j])[:, 0, 0]
     array([2.+0.j, 1.-1.j])
     """
 
@@ -43,31 +46,39 @@ class Modes:
     residues: ComplexArray
 
     def __call__(self, laplace: ArrayLike) -> ComplexArray:
-        """Sum the modes at complex frequencies of shape (..., nf) [rad/s]."""
+        """Sum the modes at complex frequencies of shape (..., nf) [rad/s].
+
+        The result has shape (..., nf, outputs, sources).
+        """
         s = np.asarray(laplace, dtype=np.complex128)
+        n, *ends = self.residues.shape[-3:]
+        shares = self.residues.reshape(*self.residues.shape[:-2], ends[0] * ends[1])
         batch = np.broadcast_shapes(self.times.shape[:-1], s.shape[:-1])
-        total = np.zeros((*batch, s.shape[-1]), dtype=np.complex128)
-        for k in range(self.times.shape[-1]):
-            total += self.residues[..., k, None] / (1.0 + s * self.times[..., k, None])
-        return total
+        total = np.zeros((*batch, s.shape[-1], shares.shape[-1]), dtype=np.complex128)
+        step = max(1, _TOGETHER // max(1, total[..., 0].size))
+        for first in range(0, n, step):
+            part = slice(first, first + step)
+            weights = 1.0 / (1.0 + s[..., :, None] * self.times[..., None, part])
+            total += weights @ shares[..., part, :]
+        return total.reshape(*total.shape[:-1], *ends)
 
 
-def expand_transfer(pencil: Pencil, right: FloatArray, weights: FloatArray) -> list[Modes]:
+def expand_transfer(pencil: Pencil, right: FloatArray, weights: FloatArray) -> Modes:
     """Expand transfers into modes, by the eigenvectors of ``G^-1 C``.
 
     Parameters
     ----------
     pencil : Pencil
         The equations; G must be regular.
-    right : ndarray of float, shape (n,)
-        What drives.
+    right : ndarray of float, shape (n, k)
+        What drives, one source a column.
     weights : ndarray of float, shape (m, n)
         What is observed.
 
     Returns
     -------
-    list of Modes, length m
-        One for each output.
+    Modes
+        Of all transfers.
 
     Raises
     ------
@@ -77,20 +88,20 @@ def expand_transfer(pencil: Pencil, right: FloatArray, weights: FloatArray) -> l
     Examples
     --------
     >>> pencil = Pencil(np.array([[1e-3]]), np.array([[1e-12]]), ("out",))
-    >>> expand_transfer(pencil, np.ones(1), np.ones((1, 1)))[0].times.real.tolist()
+    >>> expand_transfer(pencil, np.ones((1, 1)), np.ones((1, 1))).times.real.tolist()
     [1e-09]
     """
     n = pencil.size
     g, c, fine = _finite_items(pencil)
-    stacked = np.concatenate([c, np.broadcast_to(right[:, None], (*c.shape[:-1], 1))], axis=-1)
-    solved = np.linalg.solve(g, stacked)
+    sources = np.broadcast_to(right, (*c.shape[:-1], right.shape[-1]))
+    solved = np.linalg.solve(g, np.concatenate([c, sources], axis=-1))
     times, vectors = np.linalg.eig(solved[..., :n])
     vectors = vectors.astype(np.complex128, copy=False)
-    inner = np.linalg.solve(vectors, solved[..., n:].astype(np.complex128))[..., 0]
-    outer = weights @ vectors
+    inner = np.linalg.solve(vectors, solved[..., n:].astype(np.complex128))
     inner[~fine] = np.nan
+    outer = np.swapaxes(weights @ vectors, -1, -2)
     times = times.astype(np.complex128, copy=False)
-    return [Modes(times, outer[..., k, :] * inner) for k in range(len(weights))]
+    return Modes(times, outer[..., :, None] * inner[..., None, :])
 
 
 def _finite_items(pencil: Pencil) -> tuple[FloatArray, FloatArray, NDArray[np.bool_]]:

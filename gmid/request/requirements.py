@@ -196,11 +196,12 @@ def spell(value: float, unit: str) -> str:
 
     Examples
     --------
-    >>> spell(4e-7, "m"), spell(1.2345678e-12, "F")
-    ('400 nm', '1.2345678 pF')
+    >>> spell(4e-7, "m"), spell(1.2345678e-12, "F"), spell(0.00014382442956413955, "m")
+    ('400 nm', '1.2345678 pF', '0.00014382442956413955')
     """
     for digits in (4, 6, 9, 12, 15, 17):
         text = format_quantity(value, unit, digits=digits)
         if parse_quantity(text, unit) == value:
             return text
-    return f"{value!r} {unit}".strip()
+    # a bare "m" after a number is refused; the number alone is in metres
+    return repr(value) if unit == "m" else f"{value!r} {unit}".strip()

@@ -10,7 +10,8 @@ import numpy as np
 from gmid.amplifier.checks import KINDS, Check, judge, spell_condition
 from gmid.amplifier.places import PLACES
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Supply
-from gmid.amplifier.prediction import NOISE_FREQUENCIES, Prediction, predict
+from gmid.amplifier.predicting import predict_each
+from gmid.amplifier.prediction import NOISE_FREQUENCIES, Prediction
 from gmid.amplifier.signal import to_db
 from gmid.amplifier.topology import NO_RESISTOR
 from gmid.circuit.circuit import Circuit
@@ -29,6 +30,7 @@ from gmid.sheet.data import (
     Share,
     TransistorRow,
 )
+from gmid.sheet.limits import find_output_limit, find_sense_limit
 
 Progress = Callable[[str, int, int], None]
 
@@ -104,7 +106,7 @@ def review_plan(
     matching : mapping of str to Matching, optional
         By device.
     progress : callable, optional
-        Told of each condition.
+        Told of each step.
 
     Returns
     -------
@@ -120,15 +122,14 @@ def review_plan(
     ['saturation']
     """
     kept = choices or Choices()
-    predictions: dict[Condition, Prediction] = {}
     cases = list(bench)
-    for index, (condition, devices) in enumerate(cases):
-        if progress:
-            progress(f"{plan.name} in {condition}", index, len(cases))
-        predictions[condition] = predict(plan, devices, supply)
-    checks = judge(list(predictions.values()), kept, matching=matching)
     if progress:
-        progress(f"{plan.name} judged", len(cases), len(cases))
+        progress(f"{plan.name} in {len(cases)} conditions", 0, 1)
+    found = predict_each(plan, cases, supply)
+    predictions = {condition: one for (condition, _), one in zip(cases, found, strict=True)}
+    checks = judge(found, kept, matching=matching)
+    if progress:
+        progress(f"{plan.name} judged", 1, 1)
     return Reviewed(plan, predictions, checks, kept, matching or {})
 
 
@@ -182,6 +183,8 @@ def fill_amplifier(found: Reviewed) -> AmplifierSheet:
             max(float(np.max(one.low)) for one in ranges),
             min(float(np.min(one.high)) for one in ranges),
         ),
+        output_limit=find_output_limit(_all(found), found.choices.saturation_margin),
+        sense_limit=find_sense_limit(_all(found)),
         offset_sigma=None if offset is None else float(np.max(offset.sigma)),
         supply_rejection_db=None
         if rejection is None
@@ -306,6 +309,7 @@ def _fill_conditions(found: Reviewed, case: Prediction) -> list[ConditionRow]:
             output_swing=max(pick(swing.peak, index), 0.0),
             swing_by_gain=pick(swing.by_gain, index),
             swing_by_saturation=pick(swing.by_saturation, index),
+            sense_range=_finite(pick(case.sensing.peak, index)),
             control_share=pick(case.balance, index),
             node_voltages={
                 node: pick(values, index)
@@ -324,6 +328,10 @@ def _fill_conditions(found: Reviewed, case: Prediction) -> list[ConditionRow]:
         )
         for index in range(case.batch[0])
     ]
+
+
+def _finite(value: float) -> float | None:
+    return value if np.isfinite(value) else None
 
 
 def _roles(case: Prediction) -> dict[str, str]:

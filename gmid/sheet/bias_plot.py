@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from gmid.amplifier.prediction import Prediction
+from gmid.device.circuit_device import CircuitDevice
 from gmid.device.device import Device
 from gmid.device.spline import Array
 from gmid.sheet.amplifiers import Reviewed
@@ -152,9 +153,10 @@ def draw_bias(reviewed: Reviewed) -> Figure:
 
 
 def _draw_device(
-    axes: Axes, devices: Mapping[str, Device], group: Sequence[Chosen], height: float
+    axes: Axes, devices: Mapping[str, CircuitDevice], group: Sequence[Chosen], height: float
 ) -> None:
     device = devices[group[0].device]
+    assert isinstance(device, Device)
     lengths = sorted({one.length for one in group})[:_MOST_LENGTHS]
     vds = float(np.median([one.vds for one in group]))
     label, divisor = scale_axis("normalized_current", [[1e-6]])

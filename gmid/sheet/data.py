@@ -74,7 +74,11 @@ class CommonModeRow:
 
 @dataclass(frozen=True, kw_only=True)
 class ConditionRow:
-    """An amplifier in one condition at one supply: what its benches measure."""
+    """An amplifier in one condition at one supply: what its benches measure.
+
+    `sense_range` is the peak differential output up to which the common mode is sensed [V]; None
+    where it is sensed throughout.
+    """
 
     corner: str
     temperature: float
@@ -92,6 +96,7 @@ class ConditionRow:
     output_swing: float
     swing_by_gain: float
     swing_by_saturation: float
+    sense_range: float | None
     control_share: float
     node_voltages: Mapping[str, float]
     common_mode: CommonModeRow
@@ -137,6 +142,15 @@ class NoiseShares:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Limit:
+    """The least of all conditions and supplies [V], where, and the instance that ends it."""
+
+    value: float
+    condition: str
+    cause: str
+
+
+@dataclass(frozen=True, kw_only=True)
 class AmplifierSheet:
     """One distinct amplifier."""
 
@@ -156,6 +170,8 @@ class AmplifierSheet:
     noise_shares: tuple[NoiseShares, ...]
     gate_area: float
     input_range: tuple[float, float]
+    output_limit: Limit | None = None
+    sense_limit: Limit | None = None
     offset_sigma: float | None = None
     offset_shares: tuple[Share, ...] = ()
     supply_rejection_db: float | None = None
@@ -255,13 +271,20 @@ class Sheet:
         )
 
     def _repr_html_(self) -> str:
+        """Show the page in a frame of its own, so that neither style reaches the other."""
         from html import escape
 
         from gmid.sheet.html import write_html
         from gmid.sheet.outline import lay_out
 
         page = write_html(lay_out(self), self.figures, title=self.title)
-        return f'<iframe srcdoc="{escape(page)}" style="width: 100%; height: 50em"></iframe>'
+        # without a base of its own, links inside the frame would lead to the page around it
+        page = page.replace("<head>", '<head>\n<base href="about:srcdoc">', 1)
+        return (
+            f'<iframe srcdoc="{escape(page)}" sandbox="allow-same-origin" '
+            f'title="{escape(self.title)}" '
+            'style="width: 100%; height: 50em; border: 1px solid #888; background: #fff"></iframe>'
+        )
 
     def to_json(self) -> dict[str, Any]:
         """Give the sheet as plain data.

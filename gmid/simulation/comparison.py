@@ -73,7 +73,7 @@ def compare_plan(predicted: Prediction, simulated: SimulatedPlan) -> list[Compar
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> compare_plan(found, SimulatedPlan(node_voltages={"tail": 0.4}))[0].name
     'node tail'

@@ -16,9 +16,13 @@ from typing import BinaryIO, Protocol
 import numpy as np
 
 from gmid.errors import DataFault, GmidError
+from gmid.sweep.byte_places import count_bytes, find_bytes
 
 BLOCK = 1 << 20
 HEAD = 1 << 16
+_END_MARK = b"\x1a"
+"""Some writers still end a text with it."""
+
 _RATIO_FROM = 1 << 24
 
 
@@ -44,27 +48,6 @@ class Limits:
     unpacked: int = 4 << 30
     ratio: float = 200.0
     line: int = 1_000_000
-
-
-def count_lines(block: bytes) -> int:
-    r"""Count line feeds, several times faster than ``bytes.count`` where lines are short.
-
-    Parameters
-    ----------
-    block : bytes
-        Any bytes.
-
-    Returns
-    -------
-    int
-        Number of line feeds.
-
-    Examples
-    --------
-    >>> count_lines(b"a\nb\n")
-    2
-    """
-    return int(np.count_nonzero(np.frombuffer(block, dtype=np.uint8) == 10))
 
 
 class Readable(Protocol):
@@ -106,6 +89,8 @@ class RawTap:
         self._file = file
         self._hash = hashlib.sha256() if hashed else None
         self.count = 0
+        self.size = file.seek(0, 2)
+        file.seek(0)
 
     def read(self, size: int = -1) -> bytes:
         """Read at most `size` bytes.
@@ -191,7 +176,7 @@ class ByteStream:
         if encoding not in ("utf-8", "latin-1", "binary"):
             self._decoder = codecs.getincrementaldecoder(encoding)()
         self._on_digest = on_digest
-        self._total = self._run = self._seen_lines = 0
+        self._total = self._run = self._seen_lines = self._handed = 0
         self._pending = b""
         self._at = 0
         self._ended = False
@@ -221,7 +206,7 @@ class ByteStream:
         block = self._pending[self._at :] or self._next_block()
         self._pending, self._at = b"", 0
         if block:
-            self.line += self._fresh if self._fresh >= 0 else count_lines(block)
+            self.line += self._fresh if self._fresh >= 0 else count_bytes(block)
             self._fresh = -1
             self.tail = block if len(block) >= HEAD else (self.tail + block)[-2 * HEAD :]
         return block
@@ -257,7 +242,12 @@ class ByteStream:
             Will be handed out next.
         """
         self._pending, self._at = data + self._pending[self._at :], 0
-        self.line -= count_lines(data)
+        self.line -= count_bytes(data)
+
+    @property
+    def expected(self) -> float:
+        """Bytes that will have been handed out at the end, as far as the packing tells."""
+        return max(self._handed * self._tap.size / max(self._tap.count, 1), 1.0)
 
     def close(self) -> None:
         """Close the file."""
@@ -303,6 +293,7 @@ class ByteStream:
             self._check_size()
             block = self._transcode(data, first=first)
             if block:
+                self._handed += len(block)
                 self._check_block(block)
             if block or not data:
                 return block
@@ -323,6 +314,8 @@ class ByteStream:
                 data = data.decode("latin-1").encode()
         elif first:
             data = data.removeprefix(codecs.BOM_UTF8)
+        if data.endswith(_END_MARK) and self._encoding != "binary":
+            data = data.rstrip(_END_MARK)
         return data.replace(b"\r", b"\n") if self._carriage else data
 
     def _check_size(self) -> None:
@@ -350,20 +343,31 @@ class ByteStream:
                 "a NUL byte stands here: the file is damaged or binary.",
                 where=f"{self._name}:{line}", hint="Write or copy it again.",
             )  # fmt: skip
-        cut = block.find(b"\n")
-        self._run += cut if cut >= 0 else len(block)
-        if self._run > self._limits.line:
+        self._fresh = count_bytes(block)
+        long = self._find_long_line(block)
+        if long is not None:
+            line = self._seen_lines + count_bytes(block[:long]) + 1
             raise DataFault(
                 f"the line is longer than {self._limits.line} bytes.",
-                where=f"{self._name}:{self._seen_lines + 1}",
+                where=f"{self._name}:{line}",
                 hint="This is no table of rows; check what the file holds.",
             )
-        if cut >= 0:
-            self._run = len(block) - block.rfind(b"\n") - 1
-            self._fresh = count_lines(block)
-            self._seen_lines += self._fresh
-        else:
-            self._fresh = 0
+        self._run = len(block) - block.rfind(b"\n") - 1 + (0 if self._fresh else self._run)
+        self._seen_lines += self._fresh
+
+    def _find_long_line(self, block: bytes) -> int | None:
+        """Find where in a block a line is too long, if one is."""
+        limit = self._limits.line
+        cut = block.find(b"\n")
+        if self._run + (cut if cut >= 0 else len(block)) > limit:
+            return 0
+        half = max(limit // 2, 1)
+        windows = range(0, len(block) - half, half)
+        if all(block.find(b"\n", start, start + half) >= 0 for start in windows):
+            return None
+        ends = find_bytes(block)
+        gaps = np.diff(ends, append=len(block))
+        return int(ends[gaps.argmax()]) + 1 if ends.size and gaps.max() > limit + 1 else None
 
     def _damaged(self, error: Exception) -> DataFault:
         what = "the gzip file is damaged or cut off" if self._packed else "the file cannot be read"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,6 +11,7 @@ from numpy.typing import NDArray
 from gmid.errors import DataFault, GmidError, raise_faults
 from gmid.nomenclature import AXES, QUANTITIES
 from gmid.quantity import format_quantity
+from gmid.sweep.coverage import Coverage, Trail
 from gmid.sweep.model import Sweep
 from gmid.sweep.recipe import SweepRecipe
 from gmid.sweep.rows import Array, Note, Rows, describe_point
@@ -17,11 +19,14 @@ from gmid.sweep.rows import Array, Note, Rows, describe_point
 SNAP = 1e-6
 """Axis values closer than this part of the smallest true step are one value."""
 
+_SPARSEST, _SMALL = 50, 1_000_000
+"""A grid of more points than this many a row, and than this many at all, is none."""
+
 _SHOWN = 8
 """How many faulty points a message lists before it counts the rest."""
 
 
-def build_sweep(rows: Rows, recipe: SweepRecipe) -> Sweep:
+def build_sweep(rows: Rows, recipe: SweepRecipe, *, trail: Trail | None = None) -> Sweep:
     """Lay rows on their grid.
 
     Parameters
@@ -30,6 +35,8 @@ def build_sweep(rows: Rows, recipe: SweepRecipe) -> Sweep:
         With signs normalised.
     recipe : SweepRecipe
         For the unit transistor and the `nominal` mark.
+    trail : Trail, keyword-only, optional
+        Told which points of the grid there are, before any that lack are an error.
 
     Returns
     -------
@@ -54,18 +61,23 @@ def build_sweep(rows: Rows, recipe: SweepRecipe) -> Sweep:
     >>> build_sweep(rows, recipe)["id"].ravel().tolist()
     [1e-06, 2e-06]
     """
-    _check_finite(rows)
+    void = _list_void(rows, rows.values)
+    if unknown := _list_void(rows, rows.axes):
+        raise_faults(unknown + void)
     axes: dict[str, Array] = {}
-    index: NDArray[np.intp] | None = None
+    index = np.zeros(rows.size, dtype=np.intp)
     for name in AXES:
         axes[name], codes = _snap(rows, name)
-        size = axes[name].size
-        index = codes if index is None else index * size + codes
-    assert index is not None
+        index = index * axes[name].size + codes
     _check_lengths(axes["length"], rows)
     shape = tuple(axes[name].size for name in AXES)
-    index = _unique_index(rows, index, axes, int(np.prod(shape)))
-    ordered = index.size == int(np.prod(shape)) and bool(np.all(np.diff(index) == 1))
+    total = math.prod(shape)
+    _check_size(rows, axes, total)
+    if trail is not None:
+        trail.coverages.append(_cover(rows, axes, index))
+    raise_faults(void)
+    index = _unique_index(rows, index, axes, total)
+    ordered = index.size == total and bool(np.all(np.diff(index) == 1))
     values = {
         name: (column.copy() if ordered else _scatter(column, index)).reshape(shape)
         for name, column in rows.values.items()
@@ -89,9 +101,10 @@ def _scatter(column: Array, index: NDArray[np.intp]) -> Array:
     return out
 
 
-def _check_finite(rows: Rows) -> None:
+def _list_void(rows: Rows, columns: Mapping[str, Array]) -> list[GmidError]:
+    """List the columns that hold something else than finite numbers."""
     faults: list[GmidError] = []
-    for name, values in {**rows.axes, **rows.values}.items():
+    for name, values in columns.items():
         bad = np.flatnonzero(~np.isfinite(values))
         if bad.size:
             row = int(bad[0])
@@ -104,7 +117,30 @@ def _check_finite(rows: Rows) -> None:
                     hint="Repair the sweep; nothing was imported.",
                 )
             )
-    raise_faults(faults)
+    return faults
+
+
+def _check_size(rows: Rows, axes: dict[str, Array], total: int) -> None:
+    """Refuse rows that lie on no grid: each with values of its own on two axes or more."""
+    if total <= max(_SPARSEST * rows.size, _SMALL):
+        return
+    sizes = " x ".join(f"{axes[name].size} {name}" for name in AXES)
+    raise DataFault(
+        f"the {rows.size} rows of {rows.label} lie on no grid: their values would make "
+        f"one of {sizes} points.",
+        where=rows.where(0),
+        hint="Forced values that repeat are wanted on every axis, not measured ones that scatter.",
+    )
+
+
+def _cover(rows: Rows, axes: dict[str, Array], index: NDArray[np.intp]) -> Coverage:
+    shape = tuple(axes[name].size for name in AXES)
+    sound = np.ones(rows.size, dtype=bool)
+    for values in rows.values.values():
+        sound &= np.isfinite(values)
+    missing = np.ones(math.prod(shape), dtype=bool)
+    missing[index[sound]] = False
+    return Coverage(rows.device, rows.condition, axes, missing.reshape(shape))
 
 
 def _snap(rows: Rows, name: str) -> tuple[Array, NDArray[np.intp]]:

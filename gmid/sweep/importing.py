@@ -13,6 +13,7 @@ from typing import Any
 
 from gmid.errors import DataFault, GmidError, UnknownName, raise_faults
 from gmid.sweep.checks import check_sweep
+from gmid.sweep.coverage import Trail
 from gmid.sweep.derive import derive_missing
 from gmid.sweep.gridding import build_sweep
 from gmid.sweep.mapping import map_tables
@@ -25,6 +26,8 @@ from gmid.sweep.rows import Note, Rows
 from gmid.sweep.signs import normalise_signs
 from gmid.sweep.source import open_source
 from gmid.sweep.texttable import TextTable
+
+_MOST_NOTES = 3
 
 Progress = Callable[[str, int, int], None]
 """Called with what is being done, how many steps are done and how many there are."""
@@ -57,7 +60,9 @@ class SourceFile:
     rows: int
 
 
-def import_recipe(recipe: Recipe, *, progress: Progress | None = None) -> list[Sweep]:
+def import_recipe(
+    recipe: Recipe, *, progress: Progress | None = None, trail: Trail | None = None
+) -> list[Sweep]:
     """Read and check every sweep of a recipe.
 
     Parameters
@@ -66,6 +71,8 @@ def import_recipe(recipe: Recipe, *, progress: Progress | None = None) -> list[S
         What to read and how.
     progress : callable, optional
         Told of each file.
+    trail : Trail, optional
+        Told of the grids and sweeps found, also where the import then fails.
 
     Returns
     -------
@@ -106,7 +113,7 @@ def import_recipe(recipe: Recipe, *, progress: Progress | None = None) -> list[S
             faults.append(fault)
     for group in mapped.values() if not faults else ():
         try:
-            sweeps.append(_finish(_merged(group), group[0][1], recipe, sources))
+            sweeps.append(_finish(_merged(group), group[0][1], recipe, sources, trail))
         except GmidError as fault:
             faults.append(fault)
     faults += _repeated(sweeps)
@@ -163,12 +170,18 @@ def _read(path: Any, entry: SweepRecipe) -> tuple[list[TextTable], SourceFile]:
 
 
 def _finish(
-    rows: Rows, entry: SweepRecipe, recipe: Recipe, sources: Mapping[str, SourceFile]
+    rows: Rows,
+    entry: SweepRecipe,
+    recipe: Recipe,
+    sources: Mapping[str, SourceFile],
+    trail: Trail | None,
 ) -> Sweep:
     normalise_signs(rows, entry.unit.polarity)
-    sweep = build_sweep(rows, entry)
+    sweep = build_sweep(rows, entry, trail=trail)
     unwanted = frozenset(name for name, source in entry.quantities.items() if source.derived)
     sweep, derived = derive_missing(sweep, unwanted)
+    if trail is not None:
+        trail.sweeps.append(sweep)
     faults, doubts = check_sweep(sweep)
     raise_faults([_placed(fault, rows) for fault in faults])
     names = rows.files or tuple(dict.fromkeys(table.source for _, table, _ in rows.pieces))
@@ -178,7 +191,7 @@ def _finish(
         f"{rows.size} rows from {len(read)} file(s), "
         f"{', '.join(sorted({source.layout for source in read}))}.",
     )
-    notes = [first, *rows.notes, *derived, *doubts]
+    notes = [first, *_reader_notes(rows), *rows.notes, *derived, *doubts]
     return replace(
         sweep,
         provenance={
@@ -188,6 +201,18 @@ def _finish(
             "audit": [[note.level, note.text] for note in notes],
         },
     )
+
+
+def _reader_notes(rows: Rows) -> list[Note]:
+    """Tell what the readers left out or read in one of two ways; of many files, the first few."""
+    metas = [table.meta for _, table, _ in rows.pieces]
+    left = dict.fromkeys(meta["dropped"] for meta in metas if "dropped" in meta)
+    doubts = dict.fromkeys(
+        line for meta in metas for line in meta.get("note", "").splitlines() if line
+    )
+    return [Note("read", f"left out: {names}.") for names in list(left)[:_MOST_NOTES]] + [
+        Note("doubtful", text) for text in list(doubts)[:_MOST_NOTES]
+    ]
 
 
 def _placed(fault: GmidError, rows: Rows) -> GmidError:

@@ -8,7 +8,7 @@ from typing import Any
 
 from gmid.errors import DataFault, UnknownName, advise
 from gmid.nomenclature import AXES
-from gmid.quantity import parse_quantity
+from gmid.quantity import parse_quantities, parse_quantity
 from gmid.sweep.recipe import ORIGINS, ValueSource
 
 NOISE_UNITS = ("A/rtHz", "V/rtHz", "A^2/Hz", "V^2/Hz")
@@ -179,34 +179,28 @@ def expand_values(raw: object, unit: str, spelled: str | None = None) -> tuple[f
     Raises
     ------
     DataFault
-        If the range is empty or its step does not fit.
+        If the step of a range does not fit, or the list is empty.
 
     Examples
     --------
     >>> expand_values("0:0.3:0.1", "V")
     (0.0, 0.1, 0.2, 0.3)
     """
-
-    def read(item: object) -> float:
-        if spelled is None:
-            return parse_quantity(item if isinstance(item, (int, float)) else str(item), unit)
-        return parse_quantity(f"{item} {spelled}", unit)
-
     if isinstance(raw, (list, tuple)):
         if not raw:
             raise DataFault("the list of values is empty.")
-        return tuple(read(item) for item in raw)
-    parts = str(raw).split(":")
-    if len(parts) != 3:
+        if spelled is None:
+            return tuple(
+                parse_quantity(item if isinstance(item, (int, float)) else str(item), unit)
+                for item in raw
+            )
+        return tuple(parse_quantity(f"{item} {spelled}", unit) for item in raw)
+    text = str(raw)
+    if spelled is not None:
+        text = re.sub(r"[^,:]+", lambda part: f"{part[0].strip()} {spelled}", text)
+    if not re.search(r"[,:]", text):
         raise DataFault(f"{raw!r} is not a range.", hint="Write start:stop:step, or a list.")
-    start, stop, step = (read(part) for part in parts)
-    count = (stop - start) / step if step else -1.0
-    if count < 0 or abs(count - round(count)) > 1e-6 or count > 1e6:
-        raise DataFault(f"{raw!r} does not go from its start to its stop in whole steps.")
-    whole = round(count)
-    return tuple(
-        float(f"{start + (stop - start) * i / max(whole, 1):.12g}") for i in range(whole + 1)
-    )
+    return tuple(parse_quantities(text, unit))
 
 
 def read_word(raw: object) -> ValueSource:

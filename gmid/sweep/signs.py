@@ -104,7 +104,8 @@ def _orient_current(rows: Rows, strong: NDArray[np.intp], polarity: str) -> None
         _flip_value(rows, "id")
         current = rows.values["id"]
     vgs, vds = rows.axes["vgs"], rows.axes["vds"]
-    weak = np.flatnonzero((vgs <= vgs.min() + 1e-9) & (vds >= vds[strong].min()))
+    like = np.flatnonzero(vds >= vds[strong].min())
+    weak = like[vgs[like] <= vgs[like].min() + 1e-9]
     on, off = np.median(current[strong]), np.median(np.abs(current[weak]))
     if on <= off and vgs.max() > vgs.min():
         other = "n" if polarity == "p" else "p"

@@ -102,16 +102,30 @@ class TextSource:
         tuple of (int, str)
             Line number and text.  Bytes that are no UTF-8 are taken as Latin-1.
         """
+        for number, lines in self.chunks():
+            if number + len(lines) > first:
+                yield from enumerate(lines[max(first - number, 0) :], max(first, number))
+
+    def chunks(self) -> Iterator[tuple[int, list[str]]]:
+        """Iterate over the lines, many at a time.
+
+        Yields
+        ------
+        tuple of (int, list of str)
+            Number of the first line and the lines, as from `lines`.
+        """
         with self.stream() as stream:
-            number, carry = 0, b""
+            number, carry = 1, b""
             while block := stream.read():
-                *whole, carry = (carry + block).split(b"\n")
-                for line in whole:
-                    number += 1
-                    if number >= first:
-                        yield number, decode_line(line)
-            if carry and number + 1 >= first:
-                yield number + 1, decode_line(carry)
+                cut = block.rfind(b"\n") + 1
+                if not cut:
+                    carry += block
+                    continue
+                lines = _decode_lines(carry + block[: cut - 1])
+                yield number, lines
+                number, carry = number + len(lines), block[cut:]
+            if carry:
+                yield number, [decode_line(carry)]
 
     def head_lines(self) -> list[str]:
         """Whole lines of the head; the last one is left out when the head may have cut it.
@@ -277,6 +291,15 @@ def decode_line(line: bytes) -> str:
         return line.decode()
     except UnicodeDecodeError:
         return line.decode("latin-1")
+
+
+def _decode_lines(text: bytes) -> list[str]:
+    """Decode lines at once, or one by one where some are no UTF-8."""
+    try:
+        lines = text.decode().split("\n")
+    except UnicodeDecodeError:
+        return [decode_line(line) for line in text.split(b"\n")]
+    return [line.rstrip("\r") for line in lines] if b"\r" in text else lines
 
 
 def _open_raw(path: Path, name: str) -> BinaryIO:

@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import Any
 
 import h5py
+import numpy as np
 
 from gmid.condition import Condition
 from gmid.errors import DataFault, FileTrouble, GmidError
@@ -117,8 +118,13 @@ def get_text(group: h5py.Group, name: str) -> str:
     ...     print(repr(get_text(root, "netlist")))
     ''
     """
-    value = group.attrs[name]
-    return value.decode() if isinstance(value, bytes) else str(value)
+    attribute = h5py.h5a.open(group.id, name.encode())
+    if attribute.dtype.kind == "S" and attribute.shape == ():
+        value = np.empty((), dtype=attribute.dtype)
+        attribute.read(value)
+        return bytes(value[()]).decode()
+    held = group.attrs[name]
+    return held.decode() if isinstance(held, bytes) else str(held)
 
 
 class OpenedTable:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from gmid.condition import Condition
 from gmid.errors import UnknownName, advise
@@ -18,6 +19,9 @@ from gmid.table.store import (
     group_name,
     read_index,
 )
+
+if TYPE_CHECKING:
+    from gmid.sweep.listing import DataFrame
 
 
 @dataclass(frozen=True)
@@ -206,6 +210,45 @@ class Table:
                 device, corner=condition.corner, temperature=condition.temperature
             )
         return read_sweep(self.path, group_name(device, condition))
+
+    def to_frame(self) -> DataFrame:
+        """List what the table holds as a data frame.
+
+        Returns
+        -------
+        DataFrame
+            Columns ``device corner temperature nominal digest``, one row for each device in
+            each condition.
+
+        Examples
+        --------
+        >>> entry = IndexEntry("nmos", Condition("tt", 27.0), True, "00")
+        >>> Table(Path("t.h5"), "larch180", (entry,)).to_frame()["corner"].tolist()
+        ['tt']
+        """
+        from gmid.sweep.listing import make_frame
+
+        columns = {
+            "device": [entry.device for entry in self.entries],
+            "corner": [entry.condition.corner for entry in self.entries],
+            "temperature": [entry.condition.temperature for entry in self.entries],
+            "nominal": [e.condition == self.nominal(e.device) for e in self.entries],
+            "digest": [entry.digest for entry in self.entries],
+        }
+        return make_frame(columns, units={"temperature": "degC"})
+
+    def _repr_html_(self) -> str:
+        from gmid.sweep.listing import list_html
+
+        rows = []
+        for device in self.devices:
+            nominal = self.nominal(device)
+            others = [str(one) for one in self.conditions(device) if one != nominal]
+            rows.append((device, str(nominal), " ".join(others)))
+        title = f"Table of process {self.process}"
+        return list_html(
+            title, ("device", "nominal", "other conditions"), rows, notes=(str(self.path),)
+        )
 
     def __repr__(self) -> str:
         held = ", ".join(

@@ -62,7 +62,8 @@ def rewrite_table(
     if table is not None and whole:
         shutil.copyfile(table.path, target)
         entries += staying
-    with h5py.File(target, "r+" if whole else "w", libver="latest") as root:
+    mode = "r+" if whole else "w"
+    with h5py.File(target, mode, libver="latest", **_IN_MEMORY) as root:
         if table is not None and not whole:
             for entry in staying:
                 kept = table.sweep(entry.device, entry.condition)
@@ -70,6 +71,14 @@ def rewrite_table(
         for sweep in sweeps:
             entries.append(write_sweep(root, sweep, compact=compact))
         write_index(root, process, _in_order(entries, table))
+        root.flush()
+        image = root.id.get_file_image()
+    target.write_bytes(image)
+
+
+_IN_MEMORY: dict[str, Any] = {"driver": "core", "backing_store": False, "block_size": 1 << 22}
+"""The HDF5 library cannot stop in the middle: on a full disk it would bring the process down.
+So the file is made in memory, and written where an error is one like any other."""
 
 
 def _in_order(entries: Sequence[IndexEntry], table: Table | None) -> list[IndexEntry]:

@@ -48,6 +48,9 @@ class Checked:
     def __repr__(self) -> str:
         return f"Checked({self.sheet!r})"
 
+    def _repr_html_(self) -> str:
+        return self.sheet._repr_html_()
+
 
 def check(plan: str | Path | PlanFile, *, progress: Progress | None = None) -> Checked:
     """Judge a plan in every condition.

@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 from gmid.amplifier.decks import write_netlists
-from gmid.amplifier.prediction import predict
+from gmid.amplifier.predicting import predict
 from gmid.request.plans import PlanFile, has_filter, read_plan
 from gmid.request.process import open_bench
 

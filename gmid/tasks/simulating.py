@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from gmid.amplifier.checks import spell_condition
-from gmid.amplifier.prediction import predict
+from gmid.amplifier.predicting import predict
 from gmid.condition import Condition
 from gmid.errors import FileTrouble, UsageFault
 from gmid.request.plans import PlanFile, has_filter, read_plan

@@ -81,3 +81,6 @@ class Sizing:
 
     def __repr__(self) -> str:
         return f"Sizing({self.sheet!r})"
+
+    def _repr_html_(self) -> str:
+        return self.sheet._repr_html_()

@@ -21,7 +21,7 @@ ROUNDS = 5
 
 
 def write_samples(folder: Path, rows: int) -> None:
-    """Write the same random table in the three layouts."""
+    """Write the same random table in the four layouts, the listing with a tenth of the rows."""
     import numpy as np
 
     table = np.random.default_rng(1).normal(size=(rows, COLUMNS)) * 1e-6
@@ -39,6 +39,10 @@ def write_samples(folder: Path, rows: int) -> None:
         file.write("Values:\n")
         for index, row in enumerate(table.tolist()):
             file.write(f" {index}\t" + "\n\t".join(f"{v:.15e}" for v in row) + "\n\n")
+    with (folder / "a.op").open("w") as file:
+        for row in table[: rows // 10].tolist():
+            pairs = zip(names, row, strict=True)
+            file.write("".join(f"@m1[{name}] = {v:.9e}\n" for name, v in pairs) + "\n")
 
 
 def bare(path: Path) -> int:
@@ -49,6 +53,10 @@ def bare(path: Path) -> int:
         skip = 7 + COLUMNS
         frame = pd.read_csv(path, sep="\t", header=None, names=["i", "v"], usecols=["v"],
                             skiprows=skip, dtype="float64", engine="c")  # fmt: skip
+        return len(frame) // COLUMNS
+    if path.suffix == ".op":
+        frame = pd.read_csv(path, sep="=", header=None, names=["n", "v"], usecols=["v"],
+                            dtype="float64", engine="c")  # fmt: skip
         return len(frame) // COLUMNS
     separator = "," if path.suffix == ".csv" else r"\s+"
     return len(pd.read_csv(path, sep=separator, dtype="float64", engine="c"))
@@ -110,7 +118,7 @@ def main() -> None:
     rows = int(sys.argv[1]) if len(sys.argv) > 1 else 300_000
     with tempfile.TemporaryDirectory() as folder:
         write_samples(Path(folder), rows)
-        for suffix in ("csv", "txt", "raw"):
+        for suffix in ("csv", "txt", "raw", "op"):
             for mode in ("both", "bare", "ours"):
                 command = [sys.executable, __file__, f"{folder}/a.{suffix}", mode]
                 subprocess.run(command, check=True)

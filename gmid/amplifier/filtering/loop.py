@@ -1,8 +1,7 @@
 """The loop between a filter and its amplifiers.
 
-Demands need the amplifiers' own capacitances and noise, amplifiers need the demands: each round
-finds demands, sizes an amplifier where the one at hand does not meet them, and reads off what it
-brings along, until nothing moves.
+Demands need the amplifiers' own capacitances and noise, amplifiers need the demands: rounds find
+demands, size an amplifier where that at hand misses them, and read what it brings along.
 """
 
 from __future__ import annotations
@@ -38,7 +37,8 @@ from gmid.amplifier.filtering.sized import Sized
 from gmid.amplifier.filtering.transconductors import choose_multiples, find_unit, fit_elements
 from gmid.amplifier.filtering.trimming import measure_usage
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Requirement, Supply
-from gmid.amplifier.prediction import Prediction, predict
+from gmid.amplifier.predicting import predict_each
+from gmid.amplifier.prediction import Prediction
 from gmid.condition import Condition
 from gmid.device.device import Device
 from gmid.errors import NoSolution
@@ -354,7 +354,7 @@ class Loop:
         return replace(sized, base=base, predictions=self._predict(base))
 
     def _predict(self, plan: AmplifierPlan) -> tuple[Prediction, ...]:
-        return tuple(predict(plan, devices, self.supply) for _, devices in self.bench)
+        return predict_each(plan, self.bench, self.supply)
 
     def _serves(self, sized: Sized) -> bool:
         """Tell whether the amplifier at hand meets this round's demands at every position."""
@@ -390,7 +390,7 @@ class Loop:
             self.squeeze = 1.0
             self._demand(self.found.realisation, self._own(sized))
         plans = self._place(sized)
-        predictions = tuple(self._predict(plan) for plan in plans)
+        predictions = tuple(map(self._predict, plans))
         checks = tuple(judge(one, self.choices, matching=self.matching) for one in predictions)
         review = review_filter(self.found, plans, self.bench, self.supply)
         self.say(1.0, "done")

@@ -130,7 +130,7 @@ def make_model(found: Sequence[Prediction], multiple: float = 1.0) -> AmplifierM
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> one = make_model([predict(example_plan(), example_devices(), example_supply())])
     >>> one.gm_total.shape, bool((one.noise_factor > 1).all())
     ((1, 3), True)

@@ -74,7 +74,7 @@ class RealisedFilter:
     @property
     def condition(self) -> Condition:
         """Corner and temperature."""
-        return next(iter(self.bias.devices.values())).condition
+        return self.bias.conditions[0]
 
     @property
     def output(self) -> str:

@@ -110,7 +110,7 @@ def suggest(
 def _change(refiner: Refiner, task: Task, trial: Trial) -> Refiner:
     """Give the same search with one thing changed."""
     old, known = refiner.evaluator, task.supply.voltages
-    evaluator = Evaluator(old.space, old.bench, trial.supply, trial.goals, old.load)
+    evaluator = Evaluator(old.space, old.devices, trial.supply, trial.goals, old.load)
     rise = trial.supply.voltages / known
     points = [
         replace(one, voltage=one.voltage * float(rise[np.argmin(np.abs(known - one.voltage))]))

@@ -11,18 +11,19 @@ from numpy.typing import NDArray
 from gmid.amplifier.plan import Supply
 from gmid.amplifier.prediction import Prediction
 from gmid.amplifier.search.goals import Goal, measure_margins
+from gmid.amplifier.search.shared import SharedDevice
 from gmid.amplifier.search.space import Rows, Space
+from gmid.amplifier.symmetry import find_sides
 from gmid.amplifier.topology import build_circuit
 from gmid.circuit.bias import solve_bias
-from gmid.condition import Condition
-from gmid.device.device import Device
 
 Array = NDArray[np.float64]
 
 FAILED = -10.0
 """Margin of every goal where there is no bias point inside the tables."""
 
-_CHUNK = 256
+_CHUNK = 768
+"""Bias points that are solved at a time."""
 _FEW = 4
 
 
@@ -101,8 +102,8 @@ class Evaluator:
     ----------
     space : Space
         What varies.
-    bench : sequence of (Condition, mapping of str to Device)
-        Conditions and devices.
+    devices : mapping of str to SharedDevice
+        In all conditions.
     supply : Supply
         What the amplifier is fed with.
     goals : tuple of Goal
@@ -112,11 +113,11 @@ class Evaluator:
     """
 
     def __init__(
-        self, space: Space, bench: Sequence[tuple[Condition, Mapping[str, Device]]],
-        supply: Supply, goals: tuple[Goal, ...], load: tuple[float, float],
+        self, space: Space, devices: Mapping[str, SharedDevice], supply: Supply,
+        goals: tuple[Goal, ...], load: tuple[float, float],
     ) -> None:  # fmt: skip
         self.space = space
-        self.bench = bench
+        self.devices = devices
         self.supply = supply
         self.goals = goals
         self.load = load
@@ -147,20 +148,16 @@ class Evaluator:
         margins = np.full((len(rows), len(points), len(self.goals)), FAILED)
         current = np.full((len(rows), len(points)), np.inf)
         area = np.full(len(rows), np.inf)
-        for where in _group(points, watch, together=len(rows) <= _FEW):
-            here = tuple(points[k] for k in where)
-            asked = np.any(watch[where], axis=0).tolist()
-            most = max(1, _CHUNK // len(here))
-            for first in range(0, len(rows), most):
-                part = np.arange(first, min(first + most, len(rows)))
-                good, found = self._solve(rows[part], here)
-                if found is None:
-                    continue
-                at = np.ix_(part[good], np.array(where))
-                margins[at] = measure_margins(found, self.goals, asked)
-                current[at] = found.supply_current
-                area[part[good]] = found.gate_area[:, 0]
-                self.spent += len(part) * len(here)
+        most = max(1, _CHUNK // len(points))
+        for first in range(0, len(rows), most):
+            part = np.arange(first, min(first + most, len(rows)))
+            good, found = self._solve(rows[part], tuple(points))
+            if found is None:
+                continue
+            margins[part[good]] = measure_margins(found, self.goals, watch)
+            current[part[good]] = found.supply_current
+            area[part[good]] = found.gate_area[:, 0]
+            self.spent += len(part) * len(points)
         margins[:, ~watch] = np.where(margins[:, ~watch] > FAILED, np.inf, FAILED)
         return Outcome(margins, current, area)
 
@@ -168,7 +165,8 @@ class Evaluator:
         self, rows: Rows, points: tuple[Point, ...]
     ) -> tuple[NDArray[np.bool_], Prediction | None]:
         """Solve bias points; a candidate that lacks one at any of the points is left out."""
-        _, devices = self.bench[points[0].condition]
+        place = np.array([point.condition for point in points])
+        devices = {name: device.at_place(place) for name, device in self.devices.items()}
         voltage = np.array([point.voltage for point in points])
         reference = self.supply.reference_current * np.array([one.reference for one in points])
         start = self._start(points)
@@ -182,7 +180,7 @@ class Evaluator:
                 plan, voltage=voltage, vcm=self.supply.common_mode.at(voltage),
                 input_level=self.supply.input_level.at(voltage), reference_current=reference,
             )  # fmt: skip
-            bias = solve_bias(circuit, devices, start=start)
+            bias = solve_bias(circuit, devices, start=start, mirror=find_sides(circuit))
             fine = bias.inside.all(axis=1)
             if fine.all():
                 if len(rows) <= _FEW or start is None:
@@ -204,12 +202,3 @@ class Evaluator:
         """Keep the first candidate's node voltages as later starts."""
         for k, point in enumerate(points):
             self._starts[point] = {node: float(value[0, k]) for node, value in voltages.items()}
-
-
-def _group(points: Sequence[Point], watch: NDArray[np.bool_], *, together: bool) -> list[list[int]]:
-    """Put points together that share a condition and, unless told, ask for the same."""
-    groups: dict[tuple[int, bytes], list[int]] = {}
-    for k, point in enumerate(points):
-        kind = b"" if together else watch[k].tobytes()
-        groups.setdefault((point.condition, kind), []).append(k)
-    return [groups[key] for key in sorted(groups)]

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from gmid.amplifier.checks import Check, judge
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Requirement, Supply
-from gmid.amplifier.prediction import predict
+from gmid.amplifier.predicting import predict_everywhere
 from gmid.amplifier.search.advice import suggest
 from gmid.amplifier.search.floor import measure_floor
 from gmid.amplifier.search.searcher import Progress, Searcher
@@ -157,6 +157,5 @@ def _judge(
     plan: AmplifierPlan, task: Task, choices: Choices, matching: Mapping[str, Matching]
 ) -> tuple[tuple[Check, ...], float]:
     """Judge a plan, and give its largest supply current at the nominal reference."""
-    predictions = [predict(plan, devices, task.supply) for _, devices in task.bench]
-    largest = max(float(one.supply_current.max()) for one in predictions)
-    return judge(predictions, choices, matching=matching), largest
+    found = predict_everywhere(plan, task.bench, task.supply)
+    return judge([found], choices, matching=matching), float(found.supply_current.max())

@@ -6,7 +6,7 @@ that is worth as much where it is not: 0.1 is 10 % of bandwidth, 0.87 dB of gain
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -23,6 +23,9 @@ Array = NDArray[np.float64]
 
 RESERVE = 0.004
 """Margin that a search keeps for itself: simulators differ by less."""
+
+BIAS, SIGNAL, LOOP = "bias", "signal", "loop"
+"""Kinds of goals of which there are several."""
 
 _DECIBEL = np.log(10.0) / 20.0
 _RADIAN = np.pi / 180.0
@@ -43,6 +46,9 @@ class Goal:
         From a prediction to margins, negative where it is missed.
     is_standing : bool
         Whether it is a rule of the bias point, which holds at every reference current.
+    kind : str
+        What has to be measured for it; goals of a kind share that. The bias point alone by
+        default.
 
     Examples
     --------
@@ -53,6 +59,16 @@ class Goal:
     name: str
     margin: Callable[[Prediction], Array]
     is_standing: bool = False
+    kind: str = BIAS
+
+
+_KINDS = {
+    **dict.fromkeys(
+        ("gbw", "gm_total", "excess_pole", "dc_gain", "intrinsic_gain", "phase_margin"), SIGNAL
+    ),
+    "supply_current": BIAS,
+}
+"""Kinds of the demands that share one with others."""
 
 
 def list_goals(
@@ -99,10 +115,12 @@ def list_goals(
         Goal(
             "common_mode_phase_margin",
             lambda found: (probe_loop(found)[1] - choices.common_mode_phase_margin) * _RADIAN,
+            kind=LOOP,
         ),
         Goal(
             "common_mode_speed",
             lambda found: _ratio(probe_loop(found)[0], _LEAST_SPEED * found.signal.gbw),
+            kind=LOOP,
         ),
     ]
     for name, demand in demands.items():
@@ -125,7 +143,7 @@ def _list_demand(
     }
     if name in least:
         read = least[name]
-        return Goal(name, lambda found: _ratio(read(found), value))
+        return Goal(name, lambda found: _ratio(read(found), value), kind=_KINDS.get(name, name))
     others: dict[str, Callable[[Prediction], Array]] = {
         "dc_gain": lambda found: (found.signal.dc_gain_db - value) * _DECIBEL,
         "intrinsic_gain": lambda found: (
@@ -138,7 +156,9 @@ def _list_demand(
         "common_mode_gain": lambda found: (value - _common_mode_gain(found)) * _DECIBEL,
         "supply_current": lambda found: _ratio(value, found.supply_current),
     }
-    return Goal(name, others[name]) if name in others else None
+    if name not in others:
+        return None
+    return Goal(name, others[name], kind=_KINDS.get(name, name))
 
 
 def _ratio(larger: Array | float, smaller: Array | float) -> Array:
@@ -163,7 +183,7 @@ def _output_current(found: Prediction) -> Array:
 
 
 def measure_margins(
-    found: Prediction, goals: tuple[Goal, ...], wanted: Iterable[bool] | None = None
+    found: Prediction, goals: tuple[Goal, ...], watch: NDArray[np.bool_] | None = None
 ) -> Array:
     """Measure margins of a prediction.
 
@@ -173,8 +193,9 @@ def measure_margins(
         Of many candidates.
     goals : tuple of Goal
         What to reach.
-    wanted : iterable of bool, optional
-        Which goals to measure, all by default; the others come out infinite.
+    watch : ndarray of bool, shape (points, goals), optional
+        What to measure at each place on the last axis, everything by default; the others come
+        out infinite.
 
     Returns
     -------
@@ -184,16 +205,26 @@ def measure_margins(
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply())
-    >>> margins = measure_margins(found, list_goals({"gbw": Requirement(20e6)}, Choices(), {}))
-    >>> margins.shape, bool((margins[:, -1] > 0).all())
+    >>> goals = list_goals({"gbw": Requirement(1e6)}, Choices(common_mode_phase_margin=50.0), {})
+    >>> margins = measure_margins(found, goals)
+    >>> margins.shape, bool((margins > 0).all())
     ((3, 6), True)
     """
-    asked = [True] * len(goals) if wanted is None else list(wanted)
+    asked = np.ones((1, len(goals)), dtype=bool) if watch is None else watch
+    asked = np.broadcast_to(asked, (found.batch[-1] if found.batch else 1, len(goals)))
     rows = np.full((*found.batch, len(goals)), np.inf)
-    for k, goal in enumerate(goals):
-        if asked[k]:
-            margin = goal.margin(found) - RESERVE
-            rows[..., k] = np.where(np.isnan(margin), _WORST, np.maximum(margin, _WORST))
+    for kind in dict.fromkeys(goal.kind for goal in goals):
+        ours = [k for k, goal in enumerate(goals) if goal.kind == kind]
+        points = np.flatnonzero(asked[:, ours].any(axis=1))
+        everywhere = kind == BIAS or points.size == len(asked)
+        there = found if everywhere else found.take_last(points)
+        for k in ours if points.size else ():
+            margin = goals[k].margin(there) - RESERVE
+            margin = np.where(np.isnan(margin), _WORST, np.maximum(margin, _WORST))
+            if everywhere:
+                rows[..., k] = np.where(asked[:, k], margin, np.inf) if found.batch else margin
+            else:
+                rows[..., points, k] = np.where(asked[points, k], margin, np.inf)
     return rows

@@ -10,7 +10,6 @@ from numpy.typing import NDArray
 from gmid.amplifier.large import GAIN_DROP
 from gmid.amplifier.prediction import Prediction
 from gmid.amplifier.signal import OUTPUT, differential_gain
-from gmid.amplifier.symmetry import HalfNetwork
 from gmid.amplifier.topology import NO_RESISTOR, PROBE, build_circuit
 from gmid.circuit.bias import Bias, solve_bias
 from gmid.network import DoubleInjection, measure_loop
@@ -43,20 +42,16 @@ def probe_loop(found: Prediction) -> tuple[Array, Array]:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> bool(abs(probe_loop(found)[1] - found.loop_margin) < 1e-6)
     True
     """
     if found not in _LOOPS:
-        network = found.bias.linearise(drives=(PROBE,), noise=False)
-        networks = [network]
+        networks = [found.loop_half]
         if np.any(np.asarray(found.plan.load_resistance) < NO_RESISTOR):
-            networks.append(network.with_values({"rlp": NO_RESISTOR, "rln": NO_RESISTOR}))
-        loops = [
-            measure_loop(DoubleInjection(HalfNetwork(one, differential=False), PROBE), band=_BAND)
-            for one in networks
-        ]
+            networks.append(networks[0].with_values({"rlp": NO_RESISTOR}))
+        loops = [measure_loop(DoubleInjection(one, PROBE), band=_BAND) for one in networks]
         speed = np.min(np.stack([np.nan_to_num(one.gbw) for one in loops]), axis=0)
         margin = np.min(np.stack([np.nan_to_num(one.phase_margin) for one in loops]), axis=0)
         _LOOPS[found] = (speed, margin)
@@ -84,7 +79,7 @@ def probe_swing(found: Prediction, peak: float, margin: float) -> Array:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> bool(probe_swing(found, 0.2, 0.05) > 0 > probe_swing(found, 1.7, 0.05))
     True
@@ -132,7 +127,7 @@ def probe_slew(found: Prediction, rate: float) -> Array:
     Examples
     --------
     >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.prediction import predict
+    >>> from gmid.amplifier.predicting import predict
     >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
     >>> bool(probe_slew(found, 100e6) == found.slew_rate)
     True

@@ -147,7 +147,8 @@ class Searcher:
         matching: Mapping[str, Matching], say: Progress = lambda share, words: None,
     ) -> None:  # fmt: skip
         lengths = list_lengths(bench[0][1], roles, choices)
-        self.task = Task(dict(demands), load, share_devices(bench, lengths), supply)
+        self.task = Task(dict(demands), load, bench, supply)
+        self.devices = share_devices(bench, lengths)
         self.roles, self.own_well = roles, tuple(own_well)
         self.choices, self.matching, self.say = choices, matching, say
         self.goals = list_goals(self.task.demands, choices, matching)
@@ -259,7 +260,7 @@ class Searcher:
     def _seed(self, space: Space, starts: Starts) -> tuple[Refiner, Rows, float]:
         """Evaluate the starts of a form exactly at a few points; take the best and its cost."""
         task = self.task
-        evaluator = Evaluator(space, task.bench, task.supply, self.goals, task.load)
+        evaluator = Evaluator(space, self.devices, task.supply, self.goals, task.load)
         ends = task.supply.voltages[[0, -1]]
         chosen = choose_conditions(task, space)
         points, watch = list_points(task, self.goals, ends, slow_in=chosen)

@@ -127,7 +127,7 @@ def read_text(source: TextSource, layout: str = "auto", **options: Any) -> list[
     try:
         tables: list[TextTable] = read(source, **options)
     except ParametersBetween:
-        if not is_free or layout != columns.LAYOUT or "columns" in options:
+        if not is_free or layout not in (columns.LAYOUT, csv.LAYOUT) or "columns" in options:
             raise
         tables = blocks.read(source, **options)
     return tables

@@ -6,8 +6,8 @@ import re
 
 from gmid.errors import DataFault
 from gmid.sweep.numbers import is_missing, is_number
-from gmid.sweep.readers.careful import FaultList
-from gmid.sweep.readers.gather import Gather, check_tables
+from gmid.sweep.readers.cells import split_cells
+from gmid.sweep.readers.gather import Gather, LineReading
 from gmid.sweep.readers.headers import join_units
 from gmid.sweep.readers.pairs import find_pairs
 from gmid.sweep.source import TextSource
@@ -90,35 +90,24 @@ def read(source: TextSource, *, suffixes: str = "spice") -> list[TextTable]:
     >>> [(column.name, column.unit, column.values.tolist()) for column in table.columns]
     [('L', 'um', [0.18, 0.18]), ('VGS', None, [0.0, 0.1]), ('ID', None, [1e-12, 2e-12])]
     """
-    reading = _Reading(source, suffixes)
-    for number, text in source.lines():
-        reading.take(number, text)
-        if reading.faults.is_full:
-            break
-    return reading.finish()
+    return _Reading(source, suffixes).run()
 
 
-class _Reading:
+class _Reading(LineReading):
     """One pass over the lines."""
 
     def __init__(self, source: TextSource, suffixes: str) -> None:
-        self.source, self.suffixes = source, suffixes
-        self.faults = FaultList(source)
-        self.tables: list[TextTable] = []
+        super().__init__(source, suffixes)
         self.comments: list[str] = []
         self.names: list[str] = []
         self.constants: dict[str, Column] = {}
         self.zone = self.title = ""
-        self.is_zoned = False
-        self.rows: Gather | None = None
+        self.is_zoned = self.named = False
 
     def take(self, number: int, text: str) -> None:
-        if not text.strip():
-            self._close()
-            return
         comment = _COMMENT.match(text)
         words = text.split()
-        if comment is not None and not is_missing(words[0]):
+        if comment is not None and (words[0] == "*" or not is_missing(words[0])):
             self._comment(comment["text"])
         elif (match := _TITLE.match(text)) is not None:
             self.title = match["text"].strip().strip('"')
@@ -147,8 +136,12 @@ class _Reading:
         self.constants = {c.name: c for c in find_pairs(self.zone, suffixes=self.suffixes)}
 
     def _row(self, number: int, text: str) -> None:
-        words = text.split()
+        words = _cells(text)
         if self.rows is None:
+            if len(words) > 1 and not any(is_number(word) or is_missing(word) for word in words):
+                self.names = words
+                self.named = True
+                return
             names = self._names_for(len(words))
             if not names:
                 raise DataFault(
@@ -161,10 +154,10 @@ class _Reading:
 
     def _names_for(self, count: int) -> list[str]:
         """Pick the nearest comment that can be a header, else the names used before."""
-        if self.is_zoned:
+        if self.is_zoned or self.named:
             return self.names if len(self.names) == count else []
         for comment in reversed(self.comments):
-            words = join_units(comment.split(), count)
+            words = join_units(_cells(comment), count)
             if len(words) == count and "=" not in comment and not any(map(is_number, words)):
                 self.names = words
                 return words
@@ -180,12 +173,21 @@ class _Reading:
             table = self.rows.table(LAYOUT, meta, constants=list(self.constants.values()))
             self.tables.append(table)
         self.rows = None
+        self.named = False
         self.comments, self.constants = [], {}
 
-    def finish(self) -> list[TextTable]:
+    def take_blank(self) -> None:
         self._close()
-        self.faults.finish()
-        return check_tables(self.source, self.tables)
+
+    def end(self) -> None:
+        self._close()
+
+
+def _cells(text: str) -> list[str]:
+    """Split at the separator that a line bears, else at blanks."""
+    separator = next((mark for mark in ";\t," if mark in text.strip()), None)
+    cells = split_cells(text.strip(), separator)
+    return cells[:-1] if separator and not cells[-1] else cells
 
 
 def _quoted(text: str) -> list[str]:

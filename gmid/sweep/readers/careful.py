@@ -12,9 +12,10 @@ from numpy.typing import NDArray
 
 from gmid.errors import DataFault, GmidError, raise_faults
 from gmid.sweep.numbers import is_ambiguous, is_missing, is_number, parse_number
+from gmid.sweep.readers.cells import is_comment, normalise_number, split_cells
 from gmid.sweep.readers.pairs import find_pairs
 from gmid.sweep.readers.rows import Rows, has_cut_number
-from gmid.sweep.readers.scan import Shape, is_comment, normalise_number, split_cells
+from gmid.sweep.readers.scan import Shape
 from gmid.sweep.source import TextSource
 
 MOST_FAULTS = 20
@@ -169,6 +170,8 @@ class _Reading:
         """Take one line; False when reading on makes no sense."""
         shape = self._shape
         cells = split_cells(text, shape.separator)
+        if not any(cells):
+            return True
         if len(self._lines) and self._starts_table(cells):
             self._faults.add(
                 number, f"a second table begins here: {_shorten(text)}.",
@@ -215,6 +218,9 @@ class _Reading:
                 self._faults.add(number, f"column {name!r} is empty.", "Fill the field.")
             column.append(cell)
             return
+        if position in self._shape.void:
+            self._read_void(number, position, cell)
+            return
         try:
             word = self._plain(cell)
             value = parse_number(word, suffixes=self._suffixes)
@@ -229,6 +235,15 @@ class _Reading:
                 f"{parse_number(word, suffixes=other):g}."
             )
         column.append(value)
+
+    def _read_void(self, number: int, position: int, cell: str) -> None:
+        self._values[position].append(float("nan"))
+        if not is_missing(cell):
+            self._faults.add(
+                number, f"{self._names[position]!r} is {cell!r} here and missing on the rows "
+                f"before, from line {self._lines[0] if self._lines else number} on.",
+                "Simulate those points again, or take the column out.",
+            )  # fmt: skip
 
     def _word_fault(self, number: int, name: str, cell: str, fault: DataFault) -> None:
         if is_missing(cell):

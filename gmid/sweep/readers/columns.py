@@ -8,8 +8,9 @@ import numpy as np
 
 from gmid.errors import DataFault
 from gmid.sweep.numbers import parse_number
+from gmid.sweep.readers.cells import normalise_number
 from gmid.sweep.readers.common import read_shape
-from gmid.sweep.readers.scan import HeaderMissing, Shape, normalise_number, scan_lines
+from gmid.sweep.readers.scan import HeaderMissing, Shape, scan_lines
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 

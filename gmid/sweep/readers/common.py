@@ -67,6 +67,11 @@ def read_shape(
     named = name_columns(heads, shape.units if columns is None else None)
     made = [Column(*pair, values) for pair, values in zip(named, rows.values, strict=True)]
     kept, dropped = drop_repeats(made)
+    kept = [position for position in kept if position not in shape.void]
+    dropped += [
+        f"{made[position].name} (column {position + 1} holds no value)"
+        for position in sorted(shape.void)
+    ]
     meta = {
         "spellings": "\t".join(heads[position] for position in kept),
         "header": "" if shape.header is None else " ".join(shape.header.cells),

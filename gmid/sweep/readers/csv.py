@@ -6,8 +6,10 @@ import re
 from collections.abc import Sequence
 
 from gmid.errors import DataFault
+from gmid.sweep.numbers import is_number
+from gmid.sweep.readers.cells import is_comment, split_cells
 from gmid.sweep.readers.common import read_shape
-from gmid.sweep.readers.scan import Shape, is_comment, scan_lines, split_cells
+from gmid.sweep.readers.scan import Shape, scan_lines
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
@@ -15,7 +17,7 @@ LAYOUT = "csv"
 SEPARATORS = (";", "\t", ",")
 """In the order in which they are tried; with the first two a comma may be decimal."""
 
-_BLANK_PAIR = re.compile(r"[+-]?[\d.]\S*\s+[+-]?[\d.]\S*")
+_BLANK_PAIR = re.compile(r"([+-]?[\d.]\S*)\s+([+-]?[\d.]\S*)")
 
 
 def recognise(head: str) -> float:
@@ -112,6 +114,12 @@ def _judge(lines: Sequence[str], shape: Shape) -> float:
     cells = [split_cells(line, shape.separator) for line in rows[:200]]
     good = [
         row for row in cells
-        if len(row) == shape.fields and not any(map(_BLANK_PAIR.fullmatch, row))
+        if len(row) == shape.fields and not any(map(_is_pair, row))
     ]  # fmt: skip
     return len(good) / max(len(cells), 1)
+
+
+def _is_pair(cell: str) -> bool:
+    """Tell whether a cell is two numbers, which a date with a time is not."""
+    match = _BLANK_PAIR.fullmatch(cell)
+    return match is not None and all(map(is_number, match.groups()))

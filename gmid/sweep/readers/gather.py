@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from array import array
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from gmid.errors import DataFault
 from gmid.sweep.numbers import is_missing, parse_number
@@ -88,6 +90,20 @@ class Gather:
             if self._imaginary is not None:
                 self._imaginary[position].append(value.imag)
 
+    def extend(self, numbers: Iterable[int], columns: Sequence[NDArray[np.float64]]) -> None:
+        """Add rows that are known to be sound.
+
+        Parameters
+        ----------
+        numbers : iterable of int
+            Their lines.
+        columns : sequence of ndarray, shape (n_rows,)
+            One for each name; not for complex tables.
+        """
+        self.lines.extend(numbers)
+        for target, values in zip(self._real, columns, strict=True):
+            target.frombytes(np.ascontiguousarray(values).tobytes())
+
     def _cell(self, number: int, position: int, cell: str) -> complex:
         if self._imaginary is None:
             return self._read(number, position, cell)
@@ -148,6 +164,81 @@ class Gather:
             self.source.name, columns, first_line=int(lines[0]) if size else 1, lines=lines,
             meta={key: text for key, text in (meta or {}).items() if text}, layout=layout,
         )  # fmt: skip
+
+
+class LineReading(ABC):
+    """One pass over the lines of a file that holds several tables.
+
+    Parameters
+    ----------
+    source : TextSource
+        The file.
+    suffixes : {'spice', 'si'}
+        Dialect of the suffixes of numbers.
+
+    Attributes
+    ----------
+    faults : FaultList
+        What is wrong; the pass ends when it is full.
+    tables : list of TextTable
+        Those that are closed.
+    rows : Gather or None
+        The table being read.
+    last_line : int
+        Line of the text that is not blank and was taken last.
+    """
+
+    def __init__(self, source: TextSource, suffixes: str) -> None:
+        self.source, self.suffixes = source, suffixes
+        self.faults = FaultList(source)
+        self.tables: list[TextTable] = []
+        self.rows: Gather | None = None
+        self.last_line = 0
+
+    def run(self) -> list[TextTable]:
+        """Read the file.
+
+        Returns
+        -------
+        list of TextTable
+            At least one.
+
+        Raises
+        ------
+        DataFault or Faults
+            If anything is wrong.
+        """
+        for number, text in self.source.lines():
+            if text.strip():
+                self.last_line = number
+                self.take(number, text)
+            else:
+                self.take_blank()
+            if self.faults.is_full:
+                break
+        self.end()
+        self.faults.finish()
+        return check_tables(self.source, self.tables)
+
+    @abstractmethod
+    def take(self, number: int, text: str) -> None:
+        """Take one line that is not blank.
+
+        Parameters
+        ----------
+        number : int
+            Its number.
+        text : str
+            The line.
+        """
+
+    def take_blank(self) -> None:
+        """Take a blank line."""
+        return
+
+    @abstractmethod
+    def end(self) -> None:
+        """Close the last table, and keep the faults of a file that ends too early."""
 
 
 def check_tables(source: TextSource, tables: Sequence[TextTable]) -> list[TextTable]:

@@ -8,8 +8,7 @@ import numpy as np
 
 from gmid.errors import DataFault
 from gmid.sweep.numbers import is_number, parse_number
-from gmid.sweep.readers.careful import FaultList
-from gmid.sweep.readers.gather import Gather, check_tables
+from gmid.sweep.readers.gather import Gather, LineReading
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import Column, TextTable
 
@@ -72,33 +71,25 @@ def read(source: TextSource, *, suffixes: str = "spice") -> list[TextTable]:
     >>> [(column.name, column.values.tolist()) for column in table.columns]
     [('vd', [0.3, 0.3]), ('vg', [0.0, 1.0]), ('id', [1.2e-12, 2e-06])]
     """
-    reading = _Reading(source, suffixes)
-    for number, text in source.lines():
-        body = text.split("!", 1)[0].strip()
-        if body:
-            reading.take(number, body)
-        if reading.faults.is_full:
-            break
-    return reading.finish()
+    return _Reading(source, suffixes).run()
 
 
-class _Reading:
+class _Reading(LineReading):
     """One pass over the lines."""
 
     def __init__(self, source: TextSource, suffixes: str) -> None:
-        self.source, self.suffixes = source, suffixes
-        self.faults = FaultList(source)
-        self.tables: list[TextTable] = []
+        super().__init__(source, suffixes)
         self.header: list[str] = []
         self.fixed: list[Column] = []
         self.points: dict[str, tuple[int, int]] = {}
         self.place = ""
-        self.begun = self.last_line = 0
+        self.begun = 0
         self.outer: list[Column] = []
-        self.rows: Gather | None = None
 
     def take(self, number: int, text: str) -> None:
-        self.last_line = number
+        text = text.split("!", 1)[0].strip()
+        if not text:
+            return
         word = text.split()[0].upper()
         if word in ("BEGIN_HEADER", "BEGIN_DB"):
             if self.place:
@@ -175,9 +166,7 @@ class _Reading:
             rows.table(LAYOUT, {"header": "\n".join(self.header)}, constants=[*fixed, *outer])
         )
 
-    def finish(self) -> list[TextTable]:
+    def end(self) -> None:
         if self.place:
             self.faults.add(self.last_line, f"the {self.place} that began in line {self.begun} "
                             "is not closed.", "The file is cut off: copy it again.")  # fmt: skip
-        self.faults.finish()
-        return check_tables(self.source, self.tables)

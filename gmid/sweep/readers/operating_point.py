@@ -8,6 +8,7 @@ from gmid.errors import DataFault
 from gmid.sweep.numbers import is_missing, is_number
 from gmid.sweep.readers.careful import FaultList
 from gmid.sweep.readers.gather import Gather, check_tables
+from gmid.sweep.readers.repeating import Model, ModelLine, model_line
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
@@ -16,7 +17,12 @@ LAYOUT = "operating-point"
 _ENTRY = re.compile(
     r"\s*(?P<name>[^\s=]+)\s*=\s*(?P<value>[^\s=]+)\s*(?P<unit>[A-Za-z/^\d]{1,8})?\s*"
 )
-_SIDE = re.compile(r"\s*device\s+\S", re.IGNORECASE)
+_DAMAGED = re.compile(r"\s*(@[^\s=]+)\s*=\s*(\S*)\s*")
+_TITLES = 20
+_WORTH, _PATIENCE = 16, 256
+"""Records that make a model pay, and records to wait where it did not."""
+
+_SIDE = re.compile(r"\s*(?:device|element)\s+\S", re.IGNORECASE)
 
 
 def recognise(head: str) -> float:
@@ -83,37 +89,146 @@ def read(
     >>> table.names, table.column("@m1[gm]").values.tolist()
     (['vgs', '@m1[gm]'], [5e-06, 6e-06])
     """
-    start = None if record is None else _compile(record)
-    faults = FaultList(source)
-    records = _Records(source, faults, suffixes)
-    titles: list[str] = []
-    devices: list[str] = []
-    begun = False
-    for number, text in source.lines():
+    listing = _Listing(source, None if record is None else _compile(record), suffixes)
+    for first, lines in source.chunks():
+        place = 0
+        while place < len(lines) and not listing.faults.is_full:
+            place += listing.skip(first, lines, place)
+            listing.take(first + place, lines[place])
+            place += 1
+    return listing.finish()
+
+
+class _Listing:
+    """The listing while it is read: line by line, or by the model of a record that repeats.
+
+    `devices` are those of the last line of devices, `_under` those when the record began.
+    """
+
+    def __init__(
+        self, source: TextSource, start: re.Pattern[str] | None, suffixes: str
+    ) -> None:  # fmt: skip
+        self.source, self.start, self.suffixes = source, start, suffixes
+        self.faults = FaultList(source)
+        self.records = _Records(source, self.faults, suffixes)
+        self.titles: list[str] = []
+        self.devices: list[str] = []
+        self.begun = False
+        self._model: Model | None = None
+        self._lines: list[ModelLine] = []
+        self._under: list[str] = []
+        self._known: set[str] = set()
+        self._pause = 0
+
+    def take(self, number: int, text: str) -> None:
+        """Read one line with care."""
         if not text.strip():
-            continue
-        begins = start is not None and start.search(text) is not None
-        begun = begun or begins
+            self._lines.append(ModelLine(text))
+            return
+        begins = self.start is not None and self.start.search(text) is not None
+        self.begun = self.begun or begins
+        found = []
         if _SIDE.match(text):
-            devices = text.split()[1:]
-            continue
-        found = _side_entries(text, devices) or _found(text, faults, number)
-        if not found:
-            titles = [*titles, text.strip()][:20]
-            devices = devices if not text.strip().strip("-=") else []
+            self.devices = text.split()[1:]
+        else:
+            sides = _side_entries(text, self.devices)
+            self._known.update(text.split()[:1] if sides else ())
+            found = sides or _found(text, self.faults, number)
+            if not sides:
+                self._check_side(number, text)
+            if not found:
+                self.titles = [*self.titles, text.strip()][:_TITLES]
+                if text.strip().strip("-=") and not self._is_named(text):
+                    self.devices = []
         for name, value in found:
-            if begun or (start is None and name in records.entries):
-                records.close()
-                begun = False
-            records.add(number, name, value)
-        if faults.is_full:
-            break
-    records.close()
-    faults.finish()
-    meta = {"title": "\n".join(titles)}
-    return check_tables(source, [] if records.rows is None else [
-        records.rows.table(LAYOUT, meta, units={})
-    ])  # fmt: skip
+            if self._ends(name):
+                self._close()
+            if not self.records.entries:
+                self._under = self.devices
+            self.records.add(number, name, value)
+        self._lines.append(model_line(text, found, begins=begins))
+
+    def _is_named(self, text: str) -> bool:
+        """Tell whether a line gives each device a word, such as the name of its model."""
+        words = text.split()
+        return len(words) == len(self.devices) + 1 and not any(map(is_number, words))
+
+    def _check_side(self, number: int, text: str) -> None:
+        """Refuse a quantity that was given for devices before and has none or others above it."""
+        name, *words = text.split()
+        numbers = sum(is_number(word) or is_missing(word) for word in words)
+        if name in self._known and numbers and numbers == len(words):
+            self.faults.add(
+                number, f"expected {len(self.devices)} value(s) for {name!r}, as there are devices "
+                f"above, found {numbers}.", "The file is damaged: print it again.",
+            )  # fmt: skip
+
+    def skip(self, first: int, lines: list[str], place: int) -> int:
+        """Read records that repeat the one before, and tell how many lines they take.
+
+        The last of them is left to be read with care, as is what follows it.
+        """
+        room = len(lines) - place >= 3 * len(self._lines)
+        if self._pause or not room or not self._starts(lines[place]):
+            return 0
+        self._close()
+        rows, model = self.records.rows, self._model
+        if model is None or rows is None or sorted(model.names) != sorted(rows.names):
+            return 0
+        if model.has_words and len(self.titles) < _TITLES:
+            return 0
+        columns = dict(zip(model.names, model.read(lines, place), strict=True))
+        count = columns[rows.names[0]].size - 1
+        if count < _WORTH:
+            self._pause, self._model = _PATIENCE, None
+            return 0
+        numbers = range(first + place, first + place + count * model.size, model.size)
+        rows.extend(numbers, [columns[name][:count] for name in rows.names])
+        return count * model.size
+
+    def finish(self) -> list[TextTable]:
+        """Give the table."""
+        self.records.close()
+        self.faults.finish()
+        rows, meta = self.records.rows, {"title": "\n".join(self.titles)}
+        return check_tables(
+            self.source, [] if rows is None else [rows.table(LAYOUT, meta, units={})]
+        )
+
+    def _ends(self, name: str) -> bool:
+        """Tell whether a value under a name is the first of a new record."""
+        return self.begun or (self.start is None and name in self.records.entries)
+
+    def _starts(self, text: str) -> bool:
+        """Tell whether a line holds the first value of a new record, and the last was whole."""
+        if not self.records.entries or not self._lines:
+            return False
+        first = next((line for line in self._lines if line.names), None)
+        if first is None or not text.startswith(first.prefix) or self.devices != self._under:
+            return False
+        entries = _side_entries(text, self.devices) or [_entry(text) or _pair(text) or ("", "")]
+        if tuple(name for name, _ in entries) != first.names:
+            return False
+        begins = self.start is not None and self.start.search(text) is not None
+        return self.begun or begins or self._ends(first.names[0])
+
+    def _close(self) -> None:
+        """End the record, and make it the model of the next."""
+        if self.records.entries:
+            first = next(place for place, line in enumerate(self._lines) if line.names)
+            self._model = Model(self._lines[first:], self._is_words, start=self.start,
+                                suffixes=self.suffixes)  # fmt: skip
+        self._lines = []
+        self._pause = max(self._pause - 1, 0)
+        self.records.close()
+        self.begun = False
+
+    def _is_words(self, text: str) -> bool:
+        """Tell whether a line holds words that change nothing."""
+        if _SIDE.match(text) or _DAMAGED.fullmatch(text) or self._known & {*text.split()[:1]}:
+            return False
+        entries = _entry(text) or _pair(text) or _side_entries(text, self.devices)
+        return not entries
 
 
 class _Records:
@@ -189,7 +304,7 @@ def _found(text: str, faults: FaultList, number: int) -> list[tuple[str, str]]:
     found = _entry(text) or _pair(text)
     if found is not None:
         return [found]
-    damaged = re.fullmatch(r"\s*(@[^\s=]+)\s*=\s*(\S*)\s*", text)
+    damaged = _DAMAGED.fullmatch(text)
     if damaged is not None:
         faults.add(number, f"expected a number for {damaged[1]!r}, found {damaged[2]!r}.",
                    "The file is damaged: print it again.")  # fmt: skip

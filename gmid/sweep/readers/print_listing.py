@@ -55,7 +55,7 @@ def recognise(head: str) -> float:
         r"^y[ \t]*$", head, re.M
     ):
         return 0.85
-    hashed = re.search(r"^#[ \t]+(?P<names>\S.*)\n[ \t]*(?P<row>[-+.\d].*)$", head, re.M)
+    hashed = re.search(r"^[ \t]*#[ \t]+(?P<names>\S.*)\n[ \t]*(?P<row>[-+.\d].*)$", head, re.M)
     if hashed and len(hashed["names"].split()) + 1 == len(_split(hashed["row"])):
         return 0.9 if all(map(is_number, _split(hashed["row"]))) else 0.4
     return 0.0

@@ -13,15 +13,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gmid.errors import DataFault
+from gmid.sweep.byte_places import count_bytes, find_bytes
 from gmid.sweep.bytestream import ByteStream
 from gmid.sweep.numbers import is_missing, parse_number
 from gmid.sweep.readers.careful import FaultList
 from gmid.sweep.readers.raw_header import Plot
 from gmid.sweep.readers.rows import has_cut_number
-from gmid.sweep.readers.segments import GrowingArray, cut_segments, parse_in_order, read_frame
+from gmid.sweep.readers.segments import ColumnStore, cut_segments, parse_in_order, read_frame
 from gmid.sweep.source import TextSource, decode_line
 
 _FEW = 1000
+_SEGMENT = 1 << 19
 _MARK = b"\nTitle:"
 _TAB, _LF, _CR = 9, 10, 13
 
@@ -57,15 +59,20 @@ class _Feed:
         self._stream = stream
         self._carry = b""
         self._ended = False
+        self._on_line = True
         self.tail = b""
 
     def read(self) -> bytes:
-        """Hand out whole lines."""
+        """Hand out the next bytes: whole lines where the next plot may be near."""
         while not self._ended:
             block = self._stream.read()
+            if block and not self._carry and b"T" not in block:
+                self.tail = block if len(block) > 4096 else (self.tail + block)[-8192:]
+                self._on_line = block.endswith(b"\n")
+                return block
             data = self._carry + block if self._carry else block
             end = data.rfind(b"\n") + 1 if block else len(data)
-            starts = data.startswith(_MARK[1:])
+            starts = self._on_line and data.startswith(_MARK[1:])
             mark = 0 if starts or b"T" not in data else data.find(_MARK) + 1
             if mark or starts:
                 self._stream.push_back(data[mark:])
@@ -73,6 +80,7 @@ class _Feed:
             self._ended = self._ended or not block
             data, self._carry = data[:end], data[end:]
             if data:
+                self._on_line = data.endswith(b"\n")
                 self.tail = data if len(data) > 4096 else (self.tail + data)[-8192:]
                 return data
         return b""
@@ -85,13 +93,18 @@ class _Feed:
 
 @dataclass(frozen=True, eq=False)
 class _Piece:
-    """The values of one segment: columns as if it began a point after `phase` values."""
+    """The values of one segment: whole points, and what stands before and after them.
 
-    columns: list[NDArray[Any]]
-    entries: int
-    line_count: int
+    `before` is the end of a point begun in an earlier segment, `after` the start of one that a
+    later segment ends; `starts` are the lines on which points begin, counted in the segment.
+    """
+
+    before: NDArray[Any]
+    points: NDArray[Any]
+    after: NDArray[Any]
     starts: NDArray[np.int64]
-    orders: NDArray[np.int64]
+    line_count: int
+    size: int
 
 
 def _find_entries(first: NDArray[np.uint8]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
@@ -112,15 +125,17 @@ def _find_entries(first: NDArray[np.uint8]) -> tuple[NDArray[np.int64], NDArray[
 
 def _parse(text: bytes, *, count: int, is_complex: bool) -> _Piece | None:
     """Read one segment; None when its lines are not regular."""
+    size = len(text)
     letters = np.frombuffer(text, dtype=np.uint8)
-    ends = np.flatnonzero(letters == _LF)
+    ends = find_bytes(text, _LF)
     first = letters[np.concatenate(([0], ends[: -1 if text.endswith(b"\n") else None] + 1))]
     filled, orders = _find_entries(first)
-    empty = np.empty(0)
+    kind = np.complex128 if is_complex else np.float64
     if not filled.size:
-        return _Piece([empty] * count, 0, ends.size, orders, orders)
+        empty = np.empty(0, kind)
+        return _Piece(empty, np.empty((count, 0), kind), empty, orders, ends.size, size)
     parts = 2 if is_complex else 1
-    tabs = np.count_nonzero(letters == _TAB)
+    tabs = count_bytes(text, _TAB)
     if tabs == filled.size + orders.size:
         text = text.replace(b"\t\t", b"\t")
     elif tabs != filled.size:
@@ -136,9 +151,12 @@ def _parse(text: bytes, *, count: int, is_complex: bool) -> _Piece | None:
         flat = flat + 1j * frame["imaginary"].to_numpy()
     if not np.isfinite(flat).all():
         return None
-    phase = -int(orders[0]) % count if orders.size else 0
-    columns = [flat[(j - phase) % count :: count] for j in range(count)]
-    return _Piece(columns, filled.size, ends.size, filled[orders], orders)
+    first_point = int(orders[0]) if orders.size else flat.size
+    if not np.array_equal(orders, np.arange(first_point, flat.size, count)):
+        return None
+    end = first_point + (flat.size - first_point) // count * count
+    points = np.ascontiguousarray(flat[first_point:end].reshape(-1, count).T)
+    return _Piece(flat[:first_point], points, flat[end:], filled[orders], ends.size, size)
 
 
 def read_body(source: TextSource, stream: ByteStream, plot: Plot, *, suffixes: str) -> Body:
@@ -208,22 +226,35 @@ def _until_mark(lines: Iterator[tuple[int, str]]) -> Iterator[tuple[int, str]]:
 
 def _read_fast(stream: ByteStream, plot: Plot) -> Body | None:
     """Read regular values with the C reader; None when they are not."""
-    feed, count = _Feed(stream), len(plot.variables)
-    line, entries = stream.line + 1, 0
-    store, lines = [GrowingArray() for _ in range(count)], GrowingArray()
+    feed, count, line = _Feed(stream), len(plot.variables), stream.line + 1
+    store, starts = ColumnStore(), ColumnStore()
+    open_point = np.empty(0)
     parse = partial(_parse, count=count, is_complex=plot.is_complex)
-    for piece in parse_in_order(cut_segments(feed.read), parse):
-        expected = np.arange(-entries % count, piece.entries if piece else 0, count)
-        if piece is None or not np.array_equal(piece.orders, expected):
+    for piece in parse_in_order(cut_segments(feed.read, size=_SEGMENT), parse):
+        if piece is None or not _continues(piece, open_point.size, count):
             feed.give_back()
             return None
-        for column, values in zip(store, piece.columns, strict=True):
-            column.append(values)
-        lines.append(piece.starts + line)
-        line, entries = line + piece.line_count, entries + piece.entries
-    if entries == 0 or entries % count or has_cut_number(feed.tail, "\t"):
+        share = piece.size / stream.expected
+        if piece.before.size:
+            open_point = np.concatenate((open_point, piece.before))
+        if open_point.size == count:
+            store.append(open_point[:, None], share=share / max(piece.points.shape[1], 1))
+            open_point = open_point[:0]
+        store.append(piece.points, share=share)
+        starts.append(piece.starts[None] + line, share=share)
+        open_point = piece.after if piece.after.size else open_point
+        line += piece.line_count
+    if not store.rows or open_point.size or has_cut_number(feed.tail, "\t"):
         return None
-    return Body([column.finish() for column in store], lines.finish())
+    return Body(store.finish(), starts.finish()[0])
+
+
+def _continues(piece: _Piece, begun: int, count: int) -> bool:
+    """Tell whether a segment goes on with the point that the one before began."""
+    wanted = count - begun if begun else 0
+    if piece.starts.size:
+        return piece.before.size == wanted
+    return piece.before.size <= wanted
 
 
 class _Tokens:

@@ -16,13 +16,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gmid.sweep.bytestream import ByteStream
+from gmid.sweep.numbers import is_missing
 from gmid.sweep.readers.scan import Shape
-from gmid.sweep.readers.segments import (
-    GrowingArray,
-    cut_segments,
-    parse_in_order,
-    read_frame,
-)
+from gmid.sweep.readers.segments import ColumnStore, cut_segments, parse_in_order, read_frame
 from gmid.sweep.source import TextSource
 
 _FORTRAN = bytes.maketrans(b"dD", b"eE")
@@ -82,29 +78,42 @@ def read_rows_fast(source: TextSource, shape: Shape) -> Rows | None:
     """
     if (shape.decimal_comma or shape.fortran) and shape.text:
         return None
-    store, count = [GrowingArray() for _ in range(shape.width)], 0
+    store = ColumnStore()
+    words: list[list[NDArray[np.str_]]] = [[] for _ in shape.text]
     parse = partial(_parse, shape=shape, options=_options(shape))
     with source.stream() as stream:
         while stream.line < shape.first_line - 1:
             if not stream.readline():
                 return None
-        for columns in parse_in_order(cut_segments(stream.read), parse):
-            if columns is None:
+        for piece in parse_in_order(cut_segments(stream.read), parse):
+            if piece is None:
                 return None
-            count += columns[0].size
-            for column, values in zip(store, columns, strict=True):
-                column.append(values)
+            store.append(piece.numbers, share=piece.size / stream.expected)
+            for column, found in zip(words, piece.words, strict=True):
+                column.append(found)
+        count = store.rows
         if count == 0 or has_cut_number(stream.tail, shape.separator):
             return None
         uniform = _count_lines(stream) - (shape.first_line - 1) == count
     lines = None
     if not uniform:
-        numbers = [number for number, text in source.lines(shape.first_line) if text.strip()]
-        if len(numbers) != count:
+        occupied = [number for number, text in source.lines(shape.first_line) if text.strip()]
+        if len(occupied) != count:
             return None
-        lines = np.array(numbers, dtype=np.int64)
+        lines = np.array(occupied, dtype=np.int64)
     first = shape.first_line if lines is None else int(lines[0])
-    return Rows([column.finish() for column in store], first, lines)
+    numbers = store.finish()
+    if not all(np.isfinite(column).all() for column in numbers):
+        return None
+    values: dict[int, NDArray[Any]] = {
+        place: np.concatenate(column)
+        for place, column in zip(sorted(shape.text), words, strict=True)
+    }
+    values |= {place: np.broadcast_to(np.nan, count) for place in shape.void}
+    plain = iter(numbers)
+    return Rows(
+        [values[j] if j in values else next(plain) for j in range(shape.width)], first, lines
+    )
 
 
 def has_cut_number(tail: bytes, separator: str | None) -> bool:
@@ -153,7 +162,7 @@ def _length(group: bytes | None) -> int:
 def _options(shape: Shape) -> dict[str, Any]:
     """Options of the C reader for a shape."""
     kinds: Any = "float64"
-    words = set(shape.text) | ({shape.fields - 1} if shape.trailing else set())
+    words = shape.text | shape.void | ({shape.fields - 1} if shape.trailing else set())
     if words:
         kinds = {j: "category" if j in words else "float64" for j in range(shape.fields)}
     return {
@@ -165,8 +174,18 @@ def _options(shape: Shape) -> dict[str, Any]:
     }
 
 
-def _parse(text: bytes, *, shape: Shape, options: dict[str, Any]) -> list[NDArray[Any]] | None:
+@dataclass(frozen=True, eq=False)
+class _Piece:
+    """Rows of one segment: the columns of numbers, those of words, and its size in bytes."""
+
+    numbers: NDArray[np.float64]
+    words: list[NDArray[np.str_]]
+    size: int
+
+
+def _parse(text: bytes, *, shape: Shape, options: dict[str, Any]) -> _Piece | None:
     """Read one segment; None when a row or value is not plain."""
+    size = len(text)
     if shape.decimal_comma:
         if b"." in text:
             return None
@@ -174,25 +193,27 @@ def _parse(text: bytes, *, shape: Shape, options: dict[str, Any]) -> list[NDArra
     if shape.fortran:
         text = text.translate(_FORTRAN)
     if text.isspace():
-        return [np.empty(0, str if j in shape.text else float) for j in range(shape.width)]
+        empty = np.empty((shape.width - len(shape.text | shape.void), 0))
+        return _Piece(empty, [np.empty(0, str)] * len(shape.text), size)
+    if b'"' not in text:
+        options = {**options, "quoting": 3}
     frame = read_frame(text, **options)
     if frame is None:
         return None
-    columns: list[NDArray[Any]] = []
-    for j in range(shape.width):
-        if j in shape.text:
-            words = np.char.strip(np.asarray(frame[j].cat.categories, dtype=str))
-            if (words == "").any():
-                return None
-            columns.append(words[frame[j].cat.codes.to_numpy()])
-            continue
-        values = frame[j].to_numpy()
-        if not np.isfinite(values).all():
+    words = []
+    for j in sorted(shape.text):
+        kinds = np.char.strip(np.asarray(frame[j].cat.categories, dtype=str))
+        if (kinds == "").any():
             return None
-        columns.append(values)
+        words.append(kinds[frame[j].cat.codes.to_numpy()])
     if shape.trailing and any(frame[shape.fields - 1].cat.categories != ""):
         return None
-    return columns
+    for j in shape.void:
+        if not all(map(is_missing, map(str, frame[j].cat.categories))):
+            return None
+    other = shape.text | shape.void
+    plain = [frame[j].to_numpy() for j in range(shape.width) if j not in other]
+    return _Piece(np.array(plain), words, size) if plain else None
 
 
 def _count_lines(stream: ByteStream) -> int:

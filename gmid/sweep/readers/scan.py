@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import csv
 import re
 from collections import Counter
 from collections.abc import Sequence
@@ -10,13 +9,14 @@ from dataclasses import dataclass
 
 from gmid.errors import DataFault
 from gmid.sweep.numbers import is_missing, is_number
+from gmid.sweep.readers.cells import is_comment, split_cells
 from gmid.sweep.readers.headers import is_unit, join_units, split_head, strip_brackets
 from gmid.sweep.source import TextSource
 
 _SAMPLE = 60
 _COMMA_NUMBER = re.compile(r"[+-]?\d*,\d+(?:[eEdD][+-]?\d+)?\w*")
 _FORTRAN = re.compile(r"[+-]?(?:\d+[.,]?\d*|[.,]\d+)[dD][+-]?\d+")
-_RULER = re.compile(r"[-=_+|]{2,}")
+_RULER = re.compile(r"[-=_+|]{2,}|[-=_+|]{3,}(?:\s+[-=_+|]{3,})*")
 
 
 class HeaderMissing(DataFault):
@@ -72,6 +72,8 @@ class Shape:
         From a line of units.
     text : frozenset of int
         Columns of words.
+    void : frozenset of int
+        Columns without a value on any of the first rows, of which there are several.
     trailing : bool
         Whether every row ends in a separator.
     decimal_comma, fortran : bool
@@ -88,6 +90,7 @@ class Shape:
     header: Line | None = None
     units: tuple[str, ...] | None = None
     text: frozenset[int] = frozenset()
+    void: frozenset[int] = frozenset()
     trailing: bool = False
     decimal_comma: bool = False
     fortran: bool = False
@@ -98,93 +101,6 @@ class Shape:
     def width(self) -> int:
         """Number of columns."""
         return self.fields - self.trailing
-
-
-def split_cells(text: str, separator: str | None) -> list[str]:
-    """Split one line into stripped cells.
-
-    Parameters
-    ----------
-    text : str
-        The line.
-    separator : str or None
-        None for blanks; quotes are honoured otherwise.
-
-    Returns
-    -------
-    list of str
-        The cells.
-
-    Examples
-    --------
-    >>> split_cells('"Id, A", 2', ",")
-    ['Id, A', '2']
-    """
-    if separator is None:
-        return text.split()
-    if '"' in text:
-        try:
-            cells = next(csv.reader([text.replace("\r", " ")], delimiter=separator))
-        except csv.Error:
-            cells = text.split(separator)
-        return [cell.strip() for cell in cells]
-    return [cell.strip() for cell in text.split(separator)]
-
-
-def is_comment(text: str, separator: str | None) -> bool:
-    """Tell whether a line is a comment.
-
-    Parameters
-    ----------
-    text : str
-        The line.
-    separator : str or None
-        Separator of the table: with ``;`` a line that starts with it may be a row.
-
-    Returns
-    -------
-    bool
-        True for lines that start with ``# * ! ; %``; a row whose first number overflowed into
-        asterisks is none.
-
-    Examples
-    --------
-    >>> is_comment("# corner=tt", ","), is_comment("*** 1.0 2.0", None)
-    (True, False)
-    """
-    stripped = text.lstrip()
-    sign = stripped[:1]
-    if sign == "*":
-        cells = split_cells(stripped, separator)
-        return len(cells) == 1 or not is_missing(cells[0])
-    if sign == ";" and separator == ";":
-        return not any(is_number(cell, suffixes="si") for cell in split_cells(stripped, ";"))
-    return sign != "" and sign in "#!;%"
-
-
-def normalise_number(word: str, *, decimal_comma: bool) -> str:
-    """Write a decimal comma as a point.
-
-    Parameters
-    ----------
-    word : str
-        Number word.
-    decimal_comma : bool
-        Whether commas are decimal; points are then thousands separators and spoil the word.
-
-    Returns
-    -------
-    str
-        The word.
-
-    Examples
-    --------
-    >>> normalise_number("1,5", decimal_comma=True), normalise_number("1.234,5", decimal_comma=True)
-    ('1.5', '1.234,5')
-    """
-    if decimal_comma and "." in word:
-        return word if "," in word else f"{word} (a point where commas are decimal)"
-    return word.replace(",", ".") if decimal_comma else word
 
 
 def scan_lines(lines: Sequence[str], separator: str | None, *, suffixes: str) -> Shape | None:
@@ -216,19 +132,25 @@ def scan_lines(lines: Sequence[str], separator: str | None, *, suffixes: str) ->
     if not rows:
         return None
     fields = Counter(len(line.cells) for line in rows).most_common(1)[0][0]
-    sample = [line for line in rows if len(line.cells) == fields]
+    sample = _leave_preamble([line for line in rows if len(line.cells) == fields], found)
     before = [line for line in found if line.number < sample[0].number]
     header, units = _find_header(before, fields)
     first = _first_row(found, sample[0], header, units)
     counts = [Counter(line.kinds[j] for line in sample) for j in range(fields)]
     text = frozenset(j for j, count in enumerate(counts) if count["t"] > count["n"])
     words = [cell for line in sample for j, cell in enumerate(line.cells) if j not in text]
+    trailing = separator is not None and not any(line.cells[-1] for line in sample)
+    if trailing and header is not None and len(header.cells) == fields and header.cells[-1]:
+        trailing = False
+    void = (
+        j for j in range(fields - trailing) if len(sample) > 1 and counts[j]["m"] == len(sample)
+    )
     used = {line.number for line in (header, units) if line is not None}
     others = [line for line in before if line.number not in used]
     return Shape(
         separator, fields, first, header=header,
         units=None if units is None else tuple(map(strip_brackets, units.cells)),
-        text=text, trailing=separator is not None and not any(line.cells[-1] for line in sample),
+        text=text, void=frozenset(void), trailing=trailing,
         decimal_comma=separator != "," and any(map(_COMMA_NUMBER.fullmatch, words)),
         fortran=any(map(_FORTRAN.fullmatch, words)),
         comments=tuple(lines[line.number - 1].strip() for line in others if line.commented),
@@ -343,6 +265,22 @@ def _kind(cell: str, suffixes: str) -> str:
         return "m"
     word = cell.replace(",", ".") if _COMMA_NUMBER.fullmatch(cell) else cell
     return "n" if is_number(word, suffixes=suffixes) else "t"
+
+
+def _leave_preamble(sample: list[Line], found: Sequence[Line]) -> list[Line]:
+    """Leave out lines such as ``version,1.0``: as wide as the rows, but above the header."""
+    usual = Counter(line.kinds for line in sample).most_common(1)[0][0]
+    heads = [line.number for line in found if line.is_words and not line.commented
+             and len(line.cells) == len(usual)]  # fmt: skip
+    odd = 0
+    for line in sample:
+        if all(kind != "t" or then == "t" for kind, then in zip(line.kinds, usual, strict=True)):
+            break
+        odd += 1
+    beneath = odd < len(sample) and odd and any(
+        sample[odd - 1].number < number < sample[odd].number for number in heads
+    )  # fmt: skip
+    return sample[odd:] if beneath else sample
 
 
 def _find_header(before: Sequence[Line], fields: int) -> tuple[Line | None, Line | None]:

@@ -16,8 +16,12 @@ from typing import Any, TypeVar
 import numpy as np
 from numpy.typing import NDArray
 
-SEGMENT = 1 << 19
+SEGMENT = 1 << 20
+"""Small enough for the reader's words of a segment to stay in the processor's cache."""
 _MOST_WORKERS = 4
+_SPARE, _MOST_ROWS = 64, 1 << 27
+_AHEAD = 4
+"""Segments read for each thread before the oldest result is waited for."""
 T = TypeVar("T")
 
 
@@ -68,7 +72,7 @@ def read_frame(text: bytes, **options: Any) -> Any | None:
 
 
 def cut_segments(read: Callable[[], bytes], *, size: int = SEGMENT) -> Iterator[bytes]:
-    r"""Gather blocks into segments that end with a line.
+    r"""Cut blocks into segments that end with a line.
 
     Parameters
     ----------
@@ -91,14 +95,13 @@ def cut_segments(read: Callable[[], bytes], *, size: int = SEGMENT) -> Iterator[
     parts: list[bytes] = []
     total = 0
     while block := read():
-        cut = block.rfind(b"\n") + 1
-        if cut and total + cut >= size:
-            yield b"".join((*parts, block[:cut]))
-            parts, total = [], 0
-            block = block[cut:]
-        if block:
-            parts.append(block)
-            total += len(block)
+        begin = 0
+        while cut := block.find(b"\n", max(begin, begin + size - total - 1)) + 1:
+            yield b"".join((*parts, block[begin:cut]))
+            parts, total, begin = [], 0, cut
+        if begin < len(block):
+            parts.append(block[begin:])
+            total += len(block) - begin
     if parts:
         yield b"".join(parts)
 
@@ -130,67 +133,71 @@ def parse_in_order(segments: Iterator[bytes], parse: Callable[[bytes], T]) -> It
     if second is None:
         yield parse(first)
         return
-    workers = min(len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity")
-                  else os.cpu_count() or 1, _MOST_WORKERS)  # fmt: skip
+    workers = _count_workers()
     with ExitStack() as stack:
         pool = stack.enter_context(ThreadPoolExecutor(workers))
         waiting: deque[Future[T]] = deque((pool.submit(parse, first), pool.submit(parse, second)))
         stack.callback(lambda: [future.cancel() for future in waiting])
         for segment in segments:
             waiting.append(pool.submit(parse, segment))
-            if len(waiting) > workers:
+            if len(waiting) > _AHEAD * workers:
                 yield waiting.popleft().result()
         while waiting:
             yield waiting.popleft().result()
 
 
-class GrowingArray:
-    """One column that grows at its end, in place where the memory allows.
+class ColumnStore:
+    """Columns that grow piece by piece, in room that is taken at once where their end is foreseen.
 
     Examples
     --------
-    >>> column = GrowingArray()
-    >>> column.append(np.array([1.0]))
-    >>> column.append(np.array([2.0, 3.0]))
-    >>> column.finish().tolist()
-    [1.0, 2.0, 3.0]
+    >>> store = ColumnStore()
+    >>> store.append(np.array([[1.0]]), share=0.3)
+    >>> store.append(np.array([[2.0, 3.0]]), share=0.7)
+    >>> [column.tolist() for column in store.finish()]
+    [[1.0, 2.0, 3.0]]
     """
 
     def __init__(self) -> None:
-        self._values: NDArray[Any] = np.empty(0)
-        self._words: list[NDArray[Any]] = []
-        self.size = 0
+        self._block: NDArray[Any] = np.empty((0, 0))
+        self.rows = 0
 
-    def append(self, values: NDArray[Any]) -> None:
-        """Copy values to the end.
+    def append(self, block: NDArray[Any], *, share: float) -> None:
+        """Copy a piece to the end.
 
         Parameters
         ----------
-        values : ndarray, shape (n,)
-            All of one kind; may be a view.
+        block : ndarray, shape (n_columns, n_rows)
+            The same kind of numbers and number of columns each time.
+        share : float, keyword-only
+            Part of the whole text that it was read from, as far as is known.
         """
-        if values.dtype.kind == "U":
-            self._words.append(values)
+        rows = self.rows + block.shape[1]
+        if rows == self.rows:
             return
-        if self.size == 0:
-            self._values = np.empty(0, values.dtype)
-        size = self.size + values.size
-        if size > self._values.size:
-            room = max(size, self._values.size + self._values.size // 8)
-            self._values.resize(room, refcheck=False)
-        self._values[self.size : size] = values
-        self.size = size
+        if rows > self._block.shape[1]:
+            foreseen = int(1.02 * block.shape[1] / min(max(share, 1e-9), 1.0)) + _SPARE
+            more = self._block.shape[1] * 3 // 2
+            room = np.empty((block.shape[0], max(rows, more or min(foreseen, _MOST_ROWS))),
+                            dtype=block.dtype)  # fmt: skip
+            if self.rows:
+                room[:, : self.rows] = self._block[:, : self.rows]
+            self._block = room
+        self._block[:, self.rows : rows] = block
+        self.rows = rows
 
-    def finish(self) -> NDArray[Any]:
-        """Give the column and forget it.
+    def finish(self) -> list[NDArray[Any]]:
+        """Give the columns.
 
         Returns
         -------
-        ndarray, shape (n,)
+        list of ndarray, shape (n_rows,)
             All that was appended.
         """
-        if self._words:
-            return np.concatenate(self._words)
-        values, self._values = self._values, np.empty(0)
-        values.resize(self.size, refcheck=False)
-        return values
+        return list(self._block[:, : self.rows])
+
+
+def _count_workers() -> int:
+    if hasattr(os, "sched_getaffinity"):
+        return min(len(os.sched_getaffinity(0)), _MOST_WORKERS)
+    return min(os.cpu_count() or 1, _MOST_WORKERS)

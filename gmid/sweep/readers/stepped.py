@@ -8,10 +8,9 @@ import re
 
 from gmid.errors import DataFault
 from gmid.sweep.numbers import parse_number
-from gmid.sweep.readers.careful import FaultList
-from gmid.sweep.readers.gather import Gather, check_tables
+from gmid.sweep.readers.cells import split_cells
+from gmid.sweep.readers.gather import Gather, LineReading
 from gmid.sweep.readers.pairs import find_pairs
-from gmid.sweep.readers.scan import split_cells
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
@@ -74,31 +73,20 @@ def read(source: TextSource, *, suffixes: str = "spice") -> list[TextTable]:
     >>> [(column.name, column.values.tolist()) for column in table.columns]
     [('L', [1.8e-07, 1.8e-07]), ('vgs', [0.0, 0.1]), ('id', [1e-12, 2e-12])]
     """
-    reading = _Reading(source, suffixes)
-    for number, text in source.lines():
-        if text.strip():
-            reading.take(number, text)
-        if reading.faults.is_full:
-            break
-    return reading.finish()
+    return _Reading(source, suffixes).run()
 
 
-class _Reading:
+class _Reading(LineReading):
     """One pass over the lines."""
 
     def __init__(self, source: TextSource, suffixes: str) -> None:
-        self.source, self.suffixes = source, suffixes
-        self.faults = FaultList(source)
+        super().__init__(source, suffixes)
         self.names: list[str] = []
         self.separator: str | None = None
-        self.rows: Gather | None = None
         self.step = ""
-        self.tables: list[TextTable] = []
         self.runs = (0, 0)
-        self.last_line = 0
 
     def take(self, number: int, text: str) -> None:
-        self.last_line = number
         match = _STEP.match(text)
         if match is not None:
             self._close()
@@ -162,13 +150,11 @@ class _Reading:
             )  # fmt: skip
         self.tables.append(table)
 
-    def finish(self) -> list[TextTable]:
+    def end(self) -> None:
         self._close()
         if not self.faults.is_full and self.runs[0] < self.runs[1]:
             self.faults.add(self.last_line, f"the file ends after run {self.runs[0]} of "
                             f"{self.runs[1]}.", "It is cut off: export it again.")  # fmt: skip
-        self.faults.finish()
-        return check_tables(self.source, self.tables)
 
 
 def _rectangular(cell: str, suffixes: str) -> str:

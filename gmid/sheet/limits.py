@@ -9,7 +9,7 @@ import numpy as np
 from gmid.amplifier.checks import spell_condition
 from gmid.amplifier.limits import BY_GAIN, find_swing_limit
 from gmid.amplifier.prediction import Prediction
-from gmid.sheet.data import Limit
+from gmid.sheet.data import AmplifierSheet, Limit
 from gmid.sheet.words import spell_value
 
 Reader = Callable[[Prediction], np.ndarray]
@@ -118,6 +118,29 @@ def describe_limits(
             f"{_compare(sense.value, asked)}."
         )
     return " ".join(said)
+
+
+def tell_limits(one: AmplifierSheet) -> str:
+    """Say what ends the swing and the sensing of an amplifier, against the swing asked of it.
+
+    Parameters
+    ----------
+    one : AmplifierSheet
+        The amplifier.
+
+    Returns
+    -------
+    str
+        A sentence each.
+
+    Examples
+    --------
+    >>> from gmid.sheet.sample import sample_amplifier
+    >>> tell_limits(sample_amplifier()).startswith("Outputs swing to ")
+    True
+    """
+    asked = one.demands["swing"].value if "swing" in one.demands else None
+    return describe_limits(one.output_limit, one.sense_limit, asked=asked)
 
 
 def _compare(value: float, asked: float | None) -> str:

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 from gmid.sheet.blocks import Block, Grid, Heading, Paragraph, Picture
 from gmid.sheet.data import AmplifierSheet, CheckRow, Sheet
 from gmid.sheet.filter_outline import FILTER_PICTURES, lay_out_filter
-from gmid.sheet.limits import describe_limits
+from gmid.sheet.limits import tell_limits
 from gmid.sheet.words import spell_name, spell_value
 
 _VOLTAGES = ("vgs", "vds", "vsb", "vdsat", "headroom", "worst_headroom")
@@ -216,7 +216,7 @@ def describe_amplifier(one: AmplifierSheet) -> str:
         f"{one.output} outputs; common mode sensed by {FORMS[one.common_mode_sense]}.",
         f"Each output drives {load}. Gate area {one.gate_area * 1e12:.4g} um^2.",
         _describe_input_range(one.input_range),
-        describe_limits(one.output_limit, one.sense_limit, asked=_asked_swing(one)),
+        tell_limits(one),
     ]
     if one.positions:
         parts.insert(0, f"At {', '.join(one.positions)} of the filter.")
@@ -237,10 +237,6 @@ def describe_amplifier(one: AmplifierSheet) -> str:
             f"{one.common_mode_rejection_db:.1f} dB at DC; a matched circuit rejects wholly."
         )
     return " ".join(part for part in parts if part)
-
-
-def _asked_swing(one: AmplifierSheet) -> float | None:
-    return one.demands["swing"].value if "swing" in one.demands else None
 
 
 def _describe_input_range(ends: tuple[float, float]) -> str:

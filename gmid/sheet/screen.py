@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from gmid.sheet.blocks import Block, Grid, Heading, Paragraph
 from gmid.sheet.data import AmplifierSheet, Sheet
+from gmid.sheet.limits import tell_limits
 from gmid.sheet.outline import lay_out_verdict
 from gmid.sheet.words import spell_value
 
@@ -35,6 +36,7 @@ def lay_out_screen(sheet: Sheet) -> list[Block]:
             f"First to leave saturation: {weakest.name}, with "
             f"{spell_value(weakest.worst_headroom, 'V', 3)} to spare in {weakest.worst_condition}."
         ))  # fmt: skip
+        blocks.append(Paragraph(tell_limits(one)))
     return blocks
 
 

@@ -16,6 +16,7 @@ Array = NDArray[np.float64]
 Rows = NDArray[np.intp]
 
 _CASCODE_DROP = 0.2
+_LEAST_DROP = 0.2
 _INNER_SHARE = 0.8
 _INNER_RANGE = (0.15, 0.40)
 
@@ -175,14 +176,19 @@ def draw_charts(
     ]  # fmt: skip
     if cascoded:
         wanted += [
-            ("direct_cascode", "direct_cascode", 0.3, 0.2),
-            ("opposite_cascode", "opposite_cascode", 0.3, 0.2),
+            ("direct_cascode", "direct_cascode", _leave(voltage - own, inner), 0.2),
+            ("opposite_cascode", "opposite_cascode", _leave(own, inner), 0.2),
         ]
     charts = {
         name: book.draw(condition, form.devices[place], space.lengths, way, vsb=vsb)
         for name, place, way, vsb in wanted
     }
     return Charts(charts, voltage, *levels)
+
+
+def _leave(total: float, inner: float) -> float:
+    """Give what is left for a cascode at rest [V]."""
+    return max(round(total - inner, 3), _LEAST_DROP)
 
 
 def spread(values: Sequence[float] | Array, axis: int, dimensions: int = 5) -> Array:

@@ -12,10 +12,9 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gmid.amplifier.signal import OUTPUT, differential_gain
-from gmid.amplifier.symmetry import find_twin
+from gmid.amplifier.symmetry import find_sides
 from gmid.amplifier.topology import build_circuit
 from gmid.circuit.bias import Bias, solve_bias
-from gmid.circuit.circuit import Circuit
 
 if TYPE_CHECKING:
     from gmid.amplifier.prediction import Prediction
@@ -97,14 +96,8 @@ def _solve_at(
     circuit = found.circuit.with_values({"vip": level + half, "vin": level - half})
     return solve_bias(
         circuit, found.devices, start=found.bias if start is None else start,
-        mirror=_pair_nodes(circuit) if input_level is not None else None,
+        mirror=find_sides(circuit) if input_level is not None else None,
     )  # fmt: skip
-
-
-def _pair_nodes(circuit: Circuit) -> dict[str, str]:
-    """Pair the nodes of one side with those of the other, which have the same voltages."""
-    pairs = {node: find_twin(node) for node in circuit.nodes}
-    return {node: twin for node, twin in pairs.items() if node > twin}
 
 
 def _start_between(bias: Bias, end: NDArray[np.intp], share: Array) -> Start:

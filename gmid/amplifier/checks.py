@@ -12,11 +12,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.amplifier.large import OVERDRIVE, output_currents
 from gmid.amplifier.plan import Choices, Matching, Requirement
 from gmid.amplifier.predicting import predict
 from gmid.amplifier.prediction import Prediction
 from gmid.amplifier.signal import to_db
+from gmid.amplifier.slewing import OVERDRIVE, output_currents
 from gmid.condition import Condition
 from gmid.errors import UnknownName, advise
 

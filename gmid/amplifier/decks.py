@@ -10,6 +10,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import ArrayLike, NDArray
 
 from gmid.amplifier.plan import AmplifierPlan, Level, Supply
 from gmid.amplifier.topology import NO_RESISTOR, PORTS, PROBE, build_core
@@ -29,6 +30,9 @@ HOLD = 1e9
 
 SMALL_STEP = 0.01
 """Differential step that settles without slewing [V]."""
+
+USUAL_STEP = 0.6
+"""Peak of the large step where no swing is asked for [V]."""
 
 _STEP_LENGTH = 100.0  # time for a step to settle, in units of 1/(2 pi gbw)
 _STEP_POINTS = 1000
@@ -62,7 +66,7 @@ class Bench:
     plan: AmplifierPlan
     supply: Supply
     units: Mapping[str, UnitTransistor]
-    swing: float = 0.6
+    swing: float = USUAL_STEP
     gbw: float = 1e8
 
     def write(self, kind: str) -> str:
@@ -213,6 +217,49 @@ def _step(bench: Bench) -> list[str]:
     ]
 
 
+def find_step(plan: AmplifierPlan) -> float:
+    """Give the peak of the large step of the step bench: the swing asked for.
+
+    Parameters
+    ----------
+    plan : AmplifierPlan
+        The amplifier.
+
+    Returns
+    -------
+    float
+        [V]; `USUAL_STEP` where the plan asks for no swing.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_plan
+    >>> find_step(example_plan())
+    0.6
+    """
+    return plan.demands["swing"].value if "swing" in plan.demands else USUAL_STEP
+
+
+def find_edge(gbw: ArrayLike) -> NDArray[np.float64]:
+    """Give how long an edge of the step bench takes.
+
+    Parameters
+    ----------
+    gbw : array_like, shape (...)
+        Expected unity-gain frequency [Hz].
+
+    Returns
+    -------
+    ndarray, shape (...)
+        [s].
+
+    Examples
+    --------
+    >>> float(find_edge(1e7).round(12))
+    1.592e-09
+    """
+    return np.asarray(_STEP_LENGTH / (2 * np.pi * _STEP_POINTS * np.asarray(gbw)))
+
+
 def step_wave(gbw: float, swing: float) -> tuple[list[float], list[float]]:
     """Give the input of the step bench: up a little, down to one end, up to the other.
 
@@ -233,8 +280,8 @@ def step_wave(gbw: float, swing: float) -> tuple[list[float], list[float]]:
     >>> step_wave(1e7, 0.6)[1]
     [0.0, 0.0, 0.01, 0.01, -0.6, -0.6, 0.6, 0.6]
     """
-    period = _STEP_LENGTH / (2 * np.pi * gbw)
-    edge = period / _STEP_POINTS
+    edge = float(find_edge(gbw))
+    period = edge * _STEP_POINTS
     starts = [period * k + 0.1 * period for k in range(3)]
     times = [0.0]
     for start in starts:
@@ -340,8 +387,7 @@ def write_netlists(
     texts = [write_subcircuit(build_core(plan), plan.name, PORTS, units) for plan in plans]
     found = {"amplifier.cir": "\n".join(texts)}
     for k, plan in enumerate(plans):
-        swing = plan.demands["swing"].value if "swing" in plan.demands else 0.6
-        bench = Bench(plan, supply, units, swing, (gbw or {}).get(plan.name, 1e8))
+        bench = Bench(plan, supply, units, find_step(plan), (gbw or {}).get(plan.name, 1e8))
         tail = "" if k == 0 else f"_{plan.name}"
         found |= {f"bench_{kind}{tail}.cir": bench.write(kind) for kind in BENCHES}
     return found

@@ -1,4 +1,4 @@
-"""Large signals: slewing, output swing, input range and static distortion, by bias solutions.
+"""Large signals: output swing, input range and static distortion, by bias solutions.
 
 Sweeps are one more leading axis of the batch, so that all of their points are solved at once.
 """
@@ -13,7 +13,6 @@ from numpy.typing import ArrayLike, NDArray
 
 from gmid.amplifier.signal import OUTPUT, differential_gain
 from gmid.amplifier.symmetry import find_sides
-from gmid.amplifier.topology import build_circuit
 from gmid.circuit.bias import Bias, solve_bias
 
 if TYPE_CHECKING:
@@ -22,9 +21,6 @@ if TYPE_CHECKING:
 Array = NDArray[np.float64]
 Start = dict[str, Array]
 """Node voltages to begin from [V]."""
-
-OVERDRIVE = 0.4
-"""Differential input that switches the tail to one side [V]."""
 
 GAIN_DROP = float(np.sqrt(0.5))
 """Small-signal gain, over that at rest, at which the output swing ends [-]."""
@@ -282,70 +278,6 @@ def measure_input_range(found: Prediction, margin: float) -> InputRange:
             end = _first_end(excess)
             x, start = _between(x, end, share), _start_between(bias, end, share)
     return InputRange(*_cross(excess, x))
-
-
-def measure_slew_rate(found: Prediction) -> Array:
-    """Measure the differential slew rate: all of the tail current on one side.
-
-    The outputs are held at the common mode; the currents into what holds them charge the load
-    and the outputs' own capacitances.
-
-    Parameters
-    ----------
-    found : Prediction
-        The amplifier.
-
-    Returns
-    -------
-    ndarray, shape (...)
-        Of the differential output [V/s].
-
-    Examples
-    --------
-    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.predicting import predict
-    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
-    >>> bool(5e6 < measure_slew_rate(found) < 50e6)
-    True
-    """
-    positive, negative = output_currents(found, OVERDRIVE)
-    load = np.asarray(found.plan.load_capacitance) + found.signal.output_capacitance
-    return np.asarray((positive + negative) / load)
-
-
-def output_currents(found: Prediction, difference: ArrayLike) -> tuple[Array, Array]:
-    """Give what the outputs deliver while they are held at the common mode.
-
-    Parameters
-    ----------
-    found : Prediction
-        The amplifier.
-    difference : array_like, shape (...)
-        Differential input [V].
-
-    Returns
-    -------
-    out, into : ndarray, shape (...)
-        Current out of `vop` and into `von` [A].
-
-    Examples
-    --------
-    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.predicting import predict
-    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
-    >>> out, into = output_currents(found, 0.4)
-    >>> bool(10e-6 < out < 40e-6)
-    True
-    """
-    circuit = build_circuit(
-        found.plan, voltage=found.voltage, vcm=found.supply.common_mode.at(found.voltage),
-        input_level=found.supply.input_level.at(found.voltage), difference=difference,
-        reference_current=found.reference_current, loaded=False,
-    )  # fmt: skip
-    circuit.add_voltage_source("hold_p", "vop", "vcm", 0.0)
-    circuit.add_voltage_source("hold_n", "von", "vcm", 0.0)
-    bias = solve_bias(circuit, found.devices, start=found.bias)
-    return bias.source_current("hold_p"), -np.asarray(bias.source_current("hold_n"))
 
 
 def measure_third_harmonic(found: Prediction, amplitude: ArrayLike) -> Array:

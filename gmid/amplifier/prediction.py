@@ -17,7 +17,6 @@ from gmid.amplifier.large import (
     InputRange,
     Swing,
     measure_input_range,
-    measure_slew_rate,
     measure_swing,
     measure_third_harmonic,
 )
@@ -35,6 +34,7 @@ from gmid.amplifier.signal import (
     measure_noise,
     measure_signal,
 )
+from gmid.amplifier.slewing import measure_slew_rate
 from gmid.amplifier.symmetry import SideNetwork
 from gmid.amplifier.topology import NO_RESISTOR, PROBE
 from gmid.circuit.bias import Bias
@@ -303,7 +303,7 @@ class Prediction:
 
     @property
     def slew_rate(self) -> Array:
-        """Slew rate of the differential output into the load [V/s]."""
+        """Slew rate of the differential output, half-way through a full step of the bench [V/s]."""
         return self._keep(("slew",), measure_slew_rate)
 
     @property

@@ -1,11 +1,11 @@
-"""Settling of a small step in the step bench: capacitive feedback of gain -1."""
+"""Settling of a small step in the step bench, which has capacitive feedback."""
 
 from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from gmid.amplifier.decks import FEEDBACK_SHARE, HOLD
 from gmid.amplifier.signal import OUTPUT
@@ -15,12 +15,51 @@ from gmid.network.modes import Modes, expand_transfer
 
 if TYPE_CHECKING:
     from gmid.amplifier.prediction import Prediction
+    from gmid.circuit.circuit import Circuit
 
 Array = NDArray[np.float64]
 
 _DRIVE = {"drive_p": 0.5, "drive_n": -0.5}
 _POINTS = 4000
 _SLOW = 1e-5
+
+
+def build_step_circuit(found: Prediction, level: ArrayLike = 0.0) -> Circuit:
+    """Put an amplifier into the step bench: capacitive feedback of gain -1.
+
+    Parameters
+    ----------
+    found : Prediction
+        The amplifier.
+    level : array_like, shape (...)
+        Differential drive [V].
+
+    Returns
+    -------
+    Circuit
+        With the sources `drive_p` and `drive_n`. Large resistors beside the feedback capacitors
+        make the rest state the one that the capacitors alone would keep.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.amplifier.predicting import predict
+    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
+    >>> "drive_p" in build_step_circuit(found).nodes
+    True
+    """
+    bench = found.circuit.without(["vip", "vin", "clp", "cln"])
+    middle = found.supply.input_level.at(found.voltage)
+    half = np.asarray(level, dtype=np.float64) / 2
+    load = np.asarray(found.plan.load_capacitance, dtype=np.float64)
+    for side, far, sign in (("p", "n", 1.0), ("n", "p", -1.0)):
+        drive, virtual, out = f"drive_{side}", f"vi{side}", f"vo{far}"
+        bench.add_voltage_source(drive, drive, "0", middle + sign * half)
+        for name, node in ((f"in{side}", drive), (f"fb{side}", out)):
+            bench.add_capacitor(f"c{name}", node, virtual, FEEDBACK_SHARE * load)
+            bench.add_resistor(f"r{name}", node, virtual, HOLD)
+        bench.add_capacitor(f"cl{side}", f"vo{side}", "0", (1 - FEEDBACK_SHARE / 2) * load)
+    return bench
 
 
 def build_step_network(found: Prediction) -> Network:
@@ -44,16 +83,7 @@ def build_step_network(found: Prediction) -> Network:
     >>> "virtual_p" in build_step_network(found).nodes
     False
     """
-    bench = found.circuit.without(["vip", "vin", "clp", "cln"])
-    level = found.supply.input_level.at(found.voltage)
-    load = np.asarray(found.plan.load_capacitance, dtype=np.float64)
-    bench.add_voltage_source("vic", "vic", "0", level)
-    for side, far in ("pn", "np"):
-        bench.add_voltage_source(f"drive_{side}", f"drive_{side}", "0", level)
-        bench.add_capacitor(f"cin{side}", f"drive_{side}", f"vi{side}", FEEDBACK_SHARE * load)
-        bench.add_capacitor(f"cfb{side}", f"vo{far}", f"vi{side}", FEEDBACK_SHARE * load)
-        bench.add_resistor(f"rhold{side}", f"vi{side}", "vic", HOLD)
-        bench.add_capacitor(f"cl{side}", f"vo{side}", "0", (1 - FEEDBACK_SHARE / 2) * load)
+    bench = build_step_circuit(found)
     bias = solve_bias(bench, found.devices, start=found.bias)
     return bias.linearise(drives=tuple(_DRIVE), noise=False)
 

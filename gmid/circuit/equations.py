@@ -82,6 +82,7 @@ class Equations:
         self.groups = tuple(self._group(devices))
         self.offset = self._offsets()
         self.conductance = 1.0 / self._rows(circuit.resistors, "resistance")
+        self.capacitors = self._rows(circuit.capacitors, "capacitance")
         self.forced = self._rows(circuit.current_sources, "current")
 
     @property
@@ -127,7 +128,7 @@ class Equations:
         other = copy.copy(self)
         other.circuit = self.circuit.take_last(index, self.batch[-1])
         other.batch, other.size = (*self.batch[:-1], index.size), items.size
-        for name in ("count", "offset", "conductance", "forced"):
+        for name in ("count", "offset", "conductance", "capacitors", "forced"):
             setattr(other, name, take(getattr(self, name), items))
         other.groups = tuple(
             replace(one, device=devices[one.device.name], which=take(one.which, items))

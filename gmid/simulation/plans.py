@@ -12,9 +12,10 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.amplifier.decks import step_wave, write_netlists
+from gmid.amplifier.decks import find_step, step_wave, write_netlists
 from gmid.amplifier.plan import AmplifierPlan, Supply
 from gmid.amplifier.prediction import NOISE_FREQUENCIES
+from gmid.amplifier.slewing import WINDOW
 from gmid.amplifier.topology import build_core
 from gmid.device.device import Device
 from gmid.errors import NoSolution
@@ -159,8 +160,7 @@ class _Decks:
 
     @property
     def swing(self) -> float:
-        demands = self.plan.demands
-        return demands["swing"].value if "swing" in demands else 0.6
+        return find_step(self.plan)
 
 
 def _read_bias(decks: _Decks, _: Sequence[float]) -> dict[str, object]:
@@ -240,7 +240,7 @@ def _read_step(decks: _Decks, _: Sequence[float]) -> dict[str, object]:
     large = time >= corners[6]
     t, y = time[large], output[large]
     start = int(np.argmin(y))
-    a, b = (start + int(np.argmax(y[start:] > share * decks.swing)) for share in (-0.2, 0.2))
+    a, b = (start + int(np.argmax(y[start:] > share * decks.swing)) for share in (-WINDOW, WINDOW))
     return {"settling_time": float(settled), "slew_rate": float((y[b] - y[a]) / (t[b] - t[a]))}
 
 

@@ -97,6 +97,17 @@ def test_slewing_and_settling(large):
         assert float(p.settling_time) == pytest.approx(s.settling_time, rel=0.05)
 
 
+@pytest.mark.parametrize("case", CASES[1::3], ids=lambda case: case.label)
+def test_slewing_with_small_and_large_steps(case):
+    """Small steps are over before the mirrors are at rest: within 5 % all the same."""
+    plan, supply = make_plan(case)
+    for swing in (0.3, 0.8):
+        stepped = dataclasses.replace(plan, demands={"swing": Requirement(swing)})
+        outcome = run_plan(case, stepped, supply, ("open_loop", "step"))
+        simulated = outcome.simulated.slew_rate
+        assert float(outcome.predicted.slew_rate) == pytest.approx(simulated, rel=0.05), swing
+
+
 def test_output_swing_by_gain(large):
     """Within 3 % of a DC transfer."""
     for outcome in large:

@@ -13,11 +13,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gmid.amplifier.checks import LARGEST_COMMON_MODE_ERROR, LARGEST_SHARE, SMALLEST_SHARE
-from gmid.amplifier.large import OVERDRIVE, output_currents
 from gmid.amplifier.plan import Choices, Matching, Requirement
 from gmid.amplifier.prediction import Prediction
 from gmid.amplifier.search.probes import probe_loop, probe_slew, probe_swing
 from gmid.amplifier.signal import to_db
+from gmid.amplifier.slewing import OVERDRIVE, output_currents
 
 Array = NDArray[np.float64]
 

@@ -19,7 +19,7 @@ Array = NDArray[np.float64]
 _STEPS = 5
 _PER_VOLT = 4.0
 _LARGEST_INPUT = 0.5
-_AMPLE = 1.15
+_AMPLE = 2.5
 _BAND = (1.0, 1e12)
 
 _LOOPS: WeakKeyDictionary[Prediction, tuple[Array, Array]] = WeakKeyDictionary()

@@ -11,7 +11,7 @@ from gmid.amplifier.example import example_devices, example_plan, example_supply
 from gmid.amplifier.search.charts import CURRENTS, draw_chart
 from gmid.amplifier.search.combine import WEIGHT
 from gmid.amplifier.search.estimate import estimate, solve_current
-from gmid.amplifier.search.evaluation import Evaluator, Outcome, Point
+from gmid.amplifier.search.evaluation import Evaluator, Outcome, Point, Setting
 from gmid.amplifier.search.goals import RESERVE, list_goals, measure_margins
 from gmid.amplifier.search.moves import list_moves
 from gmid.amplifier.search.probes import probe_slew, probe_swing
@@ -165,15 +165,19 @@ def test_an_ample_slew_rate_is_told_by_ratios_within_a_tenth():
     assert probe_slew(found, 1.0) == pytest.approx(float(found.slew_rate), rel=0.10)
 
 
+def make_setting(goals):
+    return Setting(share_devices(make_bench(), LENGTHS), example_supply(), goals, LOAD)
+
+
 def test_evaluation_of_many_is_that_of_each():
     space = make_space(even_counts=False)
-    bench = share_devices(make_bench(), LENGTHS)
     goals = list_goals({"gbw": Requirement(20e6)}, Choices(), {})
+    setting = make_setting(goals)
     row = find_row(space)[0]
     rows = np.concatenate([row[None], list_moves(space, row)[:7]])
     points = [Point(0, 1.62), Point(0, 1.8, 1.1)]
-    together = Evaluator(space, bench, example_supply(), goals, LOAD).evaluate(rows, points)
-    alone = Evaluator(space, bench, example_supply(), goals, LOAD).evaluate(rows[5:6], points)
+    together = Evaluator(space, setting).evaluate(rows, points)
+    alone = Evaluator(space, setting).evaluate(rows[5:6], points)
     assert together.margins[5] == pytest.approx(alone.margins[0], abs=1e-6)
     assert together.current[5] == pytest.approx(alone.current[0], rel=1e-9)
     exact = predict(
@@ -186,9 +190,7 @@ def test_what_is_not_watched_does_not_count():
     space = make_space(even_counts=False)
     goals = list_goals({"gbw": Requirement(1e12)}, Choices(), {})
     watch = np.array([[goal.name != "gbw" for goal in goals]])
-    evaluator = Evaluator(
-        space, share_devices(make_bench(), LENGTHS), example_supply(), goals, LOAD
-    )
+    evaluator = Evaluator(space, make_setting(goals))
     seen = evaluator.evaluate(find_row(space), [Point(0, 1.8)], watch)
     blind = evaluator.evaluate(find_row(space), [Point(0, 1.8)])
     assert np.isinf(seen.margins[0, 0, -1])
@@ -201,13 +203,7 @@ def test_a_candidate_without_a_bias_point_is_far_behind_and_does_not_stop_the_ot
     broken = row.copy()
     broken[space.column["count.tail"]] = space.largest[space.column["count.tail"]]
     broken[space.column["count.load"]] = 0
-    evaluator = Evaluator(
-        space,
-        share_devices(make_bench(), LENGTHS),
-        example_supply(),
-        list_goals({}, Choices(), {}),
-        LOAD,
-    )
+    evaluator = Evaluator(space, make_setting(list_goals({}, Choices(), {})))
     outcome = evaluator.evaluate(np.stack([broken, row]), [Point(0, 1.8)])
     assert np.isfinite(outcome.area[1])
     assert outcome.violation[0] > outcome.violation[1]

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from gmid.amplifier.crew import Crew
 from gmid.amplifier.prediction import Prediction
 from gmid.amplifier.signal import differential_gain, to_db
 from gmid.amplifier.topology import PROBE
@@ -52,16 +53,28 @@ def draw_figures(reviewed: Reviewed) -> dict[str, str]:
     >>> list(draw_figures(sample_review()))
     ['a1_schematic', 'a1_open_loop', 'a1_common_mode', 'a1_bias', 'a1_noise']
     """
-    name = reviewed.plan.name
-    figures = {f"{name}_schematic": draw_schematic(reviewed.plan)}
-    kinds: tuple[tuple[str, Callable[[Reviewed], Figure]], ...] = (
-        ("open_loop", draw_open_loop), ("common_mode", draw_common_mode), ("bias", draw_bias),
-        ("noise", draw_noise),
-    )  # fmt: skip
-    for kind, draw in kinds:
-        with drawing():
-            figures[f"{name}_{kind}"] = save_figure(draw(reviewed), "svg").decode("utf-8")
-    return figures
+    name, kinds = reviewed.plan.name, tuple(_list_kinds())
+    with drawing():  # loads what every process of the crew needs
+        save_figure(new_figure(_WIDTH, _WIDTH), "svg")
+    with Crew(reviewed) as crew:
+        drawn = crew.run(_draw, kinds)
+    return {
+        f"{name}_schematic": draw_schematic(reviewed.plan),
+        **{f"{name}_{kind}": text for kind, text in zip(kinds, drawn, strict=True)},
+    }
+
+
+def _list_kinds() -> dict[str, Callable[[Reviewed], Figure]]:
+    return {
+        "open_loop": draw_open_loop, "common_mode": draw_common_mode, "bias": draw_bias,
+        "noise": draw_noise,
+    }  # fmt: skip
+
+
+def _draw(reviewed: Reviewed, kind: str) -> str:
+    """Draw one figure; a job of a crew."""
+    with drawing():
+        return save_figure(_list_kinds()[kind](reviewed), "svg").decode("utf-8")
 
 
 def draw_open_loop(reviewed: Reviewed) -> Figure:

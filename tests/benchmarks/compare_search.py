@@ -115,7 +115,7 @@ def evolve(name: str, generations: int) -> tuple[float, float, float]:
     )  # fmt: skip
     ((space, starts),) = search.rank_forms()
     task = search.task
-    evaluator = Evaluator(space, search.devices, task.supply, search.goals, task.load)
+    evaluator = Evaluator(space, search.setting)
     everywhere = list_points(task, search.goals, task.supply.voltages[[0, -1]])
     refiner = Refiner(evaluator, *everywhere, choices.minimise)
     points, watch = list_points(task, search.goals, task.supply.voltages[:1])

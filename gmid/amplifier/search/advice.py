@@ -110,7 +110,8 @@ def suggest(
 def _change(refiner: Refiner, task: Task, trial: Trial) -> Refiner:
     """Give the same search with one thing changed."""
     old, known = refiner.evaluator, task.supply.voltages
-    evaluator = Evaluator(old.space, old.devices, trial.supply, trial.goals, old.load)
+    setting = replace(old.setting, supply=trial.supply, goals=trial.goals)
+    evaluator = Evaluator(old.space, setting)
     rise = trial.supply.voltages / known
     points = [
         replace(one, voltage=one.voltage * float(rise[np.argmin(np.abs(known - one.voltage))]))
@@ -125,7 +126,7 @@ def _begin(words: str) -> str:
 
 def _worst(nearest: Candidate, refiner: Refiner) -> dict[str, float]:
     margins = np.where(refiner.watch, nearest.outcome.margins[0], np.inf).min(axis=0)
-    goals = refiner.evaluator.goals
+    goals = refiner.evaluator.setting.goals
     return {goal.name: float(one) for goal, one in zip(goals, margins, strict=True)}
 
 
@@ -184,7 +185,7 @@ def _list_trials(
             trials.append(
                 Trial(_spell(name, value, eased), list_goals(demands, choices, matching), supply)
             )
-    same = refiner.evaluator.goals
+    same = refiner.evaluator.setting.goals
     higher = replace(supply, voltage=supply.voltage * (1 + _EASE))
     trials.append(Trial(f"a supply of {higher.voltage:.3g} V", same, higher))
     if supply.tolerance > 0:

@@ -131,6 +131,21 @@ class Refiner:
         return int(self._lesson.sum())
 
     @property
+    def lesson(self) -> NDArray[np.bool_]:
+        """What there is to watch besides what binds, shape (points, goals)."""
+        return self._lesson.copy()
+
+    def recall(self, lesson: NDArray[np.bool_]) -> None:
+        """Take over what another refiner at the same points had learnt.
+
+        Parameters
+        ----------
+        lesson : ndarray of bool, shape (points, goals)
+            What to watch besides what binds.
+        """
+        self._lesson[:] = lesson
+
+    @property
     def space(self) -> Space:
         """What varies."""
         return self.evaluator.space

@@ -8,16 +8,16 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from gmid.amplifier.crew import Crew
 from gmid.amplifier.places import INPUTS, OUTPUTS, SENSES, Variant
 from gmid.amplifier.plan import Choices, Matching, Requirement, Supply
-from gmid.amplifier.search.dress import dress
-from gmid.amplifier.search.evaluation import Evaluator, Point
+from gmid.amplifier.search.evaluation import Evaluator, Point, Setting
 from gmid.amplifier.search.goals import Goal, list_goals
-from gmid.amplifier.search.refine import Candidate, Refiner, rate
+from gmid.amplifier.search.refine import Candidate, Refiner
 from gmid.amplifier.search.shared import share_devices
-from gmid.amplifier.search.sketch import draw_charts
-from gmid.amplifier.search.space import Rows, Space, make_form
-from gmid.amplifier.search.starts import Starts, Task, choose_conditions, find_starts
+from gmid.amplifier.search.space import Space, make_form
+from gmid.amplifier.search.stages import Refined, rank_form, refine_start, try_starts
+from gmid.amplifier.search.starts import Starts, Task, choose_conditions
 from gmid.condition import Condition
 from gmid.device.device import Device
 from gmid.errors import DataFault
@@ -28,12 +28,10 @@ Bench = Sequence[tuple[Condition, Mapping[str, Device]]]
 SLOW = ("swing", "slew_rate", "offset", "output_current")
 """Goals that take long: looked at in few conditions until everything is checked."""
 
-_STARTS = 12
 _FORMS = 4
 _REFINED = 2
 _BEHIND = 0.45
 _ROUNDS = 5
-_TELLING = 2
 _CHECKS = 3
 _GAINED = 0.004
 _SHARE = 0.1
@@ -148,28 +146,38 @@ class Searcher:
     ) -> None:  # fmt: skip
         lengths = list_lengths(bench[0][1], roles, choices)
         self.task = Task(dict(demands), load, bench, supply)
-        self.devices = share_devices(bench, lengths)
         self.roles, self.own_well = roles, tuple(own_well)
         self.choices, self.matching, self.say = choices, matching, say
         self.goals = list_goals(self.task.demands, choices, matching)
+        self.setting = Setting(share_devices(bench, lengths), supply, self.goals, load)
+        self.crew = Crew(self, size=1)
 
     def run(self) -> tuple[Refiner, Candidate]:
         """Search the forms that promise most; go on to others while nothing meets the demands."""
+        for device in self.setting.devices.values():
+            device.settle()
+        with Crew(self) as self.crew:
+            return self._run()
+
+    def _run(self) -> tuple[Refiner, Candidate]:
         ranked = self.rank_forms()
         best_cost = float(ranked[0][1].cost.min())
         near = [one for one in ranked if float(one[1].cost.min()) <= best_cost + _BEHIND]
         self.say(0.2, f"evaluating {len(near[:_FORMS])} of {len(ranked)} forms")
-        seeds = [self._seed(space, starts) for space, starts in near[:_FORMS]]
+        tried = self.crew.run(try_starts, near[:_FORMS])
+        seeds = [(near[k][0], *one) for k, one in enumerate(tried)]
         seeds.sort(key=lambda seed: seed[2])
-        found = []
-        for k, (refiner, row, _) in enumerate(seeds[:_REFINED]):
-            start = refiner.settle(row[None])[0]
-            found.append((refiner, self._round(refiner, start, 0.3 + 0.15 * k)))
+        first = [(space, row) for space, row, _ in seeds[:_REFINED]]
+        self.say(0.3, f"refining {', '.join(str(space.form.variant) for space, _ in first)}")
+        refined = self.crew.run(refine_start, first)
+        found = [self._resume(first[k][0], one) for k, one in enumerate(refined)]
         found.sort(key=lambda one: one[1].cost)
         refiner, best = self._finish(*found[0])
         rest = found[1:]
         if 0 < best.missed < _HOPELESS:
-            rest += [(one, one.settle(row[None])[0]) for one, row, _ in seeds[_REFINED:]]
+            for space, row, _ in seeds[_REFINED:]:
+                late = self.open_refiner(space)
+                rest.append((late, late.settle(row[None])[0]))
         for other, start in rest:
             if best.missed <= 0 or best.missed >= _HOPELESS:
                 break
@@ -242,30 +250,33 @@ class Searcher:
 
     def rank_forms(self) -> list[tuple[Space, Starts]]:
         """Apply the closed forms to every form; the cheapest comes first."""
-        low = float(self.task.supply.voltages[0])
-        ranked = []
-        variants = self._variants()
-        for k, variant in enumerate(variants):
-            self.say(0.25 * k / len(variants), f"closed forms of {variant}")
-            space = self._space(variant)
-            conditions = choose_conditions(self.task, space)
-            charts = [
-                draw_charts(space, self.task.book, k, self.task.supply, low, self.task.swing)
-                for k in conditions
-            ]
-            ranked.append((space, find_starts(self.task, space, charts, _STARTS)))
+        self.say(0.05, "closed forms of every form")
+        ranked: list[tuple[Space, Starts]] = self.crew.run(rank_form, self.list_spaces())
         ranked.sort(key=lambda one: float(one[1].cost.min()))
         return ranked
 
-    def _seed(self, space: Space, starts: Starts) -> tuple[Refiner, Rows, float]:
-        """Evaluate the starts of a form exactly at a few points; take the best and its cost."""
-        task = self.task
-        evaluator = Evaluator(space, self.devices, task.supply, self.goals, task.load)
-        ends = task.supply.voltages[[0, -1]]
-        chosen = choose_conditions(task, space)
-        points, watch = list_points(task, self.goals, ends, slow_in=chosen)
-        refiner = Refiner(evaluator, points, watch, self.choices.minimise)
-        rows = dress(task, space, starts)
-        outcome = evaluator.evaluate(rows, [Point(k, float(ends[0])) for k in chosen[:_TELLING]])
-        rated = rate(outcome, self.choices.minimise)
-        return refiner, rows[int(np.argmin(rated))], float(rated.min())
+    def open_refiner(self, space: Space) -> Refiner:
+        """Begin the refinement of a form: at both ends of the supply, what is slow in few places.
+
+        Parameters
+        ----------
+        space : Space
+            The form.
+
+        Returns
+        -------
+        Refiner
+            At those points.
+        """
+        evaluator = Evaluator(space, self.setting, self.crew)
+        chosen = choose_conditions(self.task, space)
+        ends = self.task.supply.voltages[[0, -1]]
+        points, watch = list_points(self.task, self.goals, ends, slow_in=chosen)
+        return Refiner(evaluator, points, watch, self.choices.minimise)
+
+    def _resume(self, space: Space, refined: Refined) -> tuple[Refiner, Candidate]:
+        """Go on where another process left off."""
+        refiner = self.open_refiner(space)
+        refiner.evaluator.starts.update(refined.starts)
+        refiner.recall(refined.lesson)
+        return refiner, refined.best

@@ -171,6 +171,15 @@ class SharedDevice(JointDevice):
     def _whole(self) -> CircuitModel:
         return super().model(self._all)
 
+    def settle(self) -> None:
+        """Settle every spline that a search reads, in every condition and at every length."""
+        each = np.arange(len(self.parts) * self._all.size)
+        if each.size:
+            model, none = self.model(self._all), np.zeros(each.size)
+            model.current_and_derivatives(none, none, none, each)
+            model.small_signal(none, none, none, each)
+            model.vdsat(none, none, none, each)
+
     def at_place(self, place: ArrayLike) -> SharedDevice:
         """Give the same device for another batch.
 

@@ -122,6 +122,10 @@ def find_swing_limit(found: Prediction, margin: float = 0.05) -> Names:
     >>> str(find_swing_limit(found))
     'direct_p'
     """
+    return found.keep(("swing limit", margin), lambda whole: _trace_limit(whole, margin))
+
+
+def _trace_limit(found: Prediction, margin: float) -> Names:
     swing = found.output_swing(margin)
     wanted = np.maximum(np.minimum(swing.by_saturation, swing.by_gain), 0.0)
     inputs = np.broadcast_to(wanted / found.signal.dc_gain, found.batch)

@@ -128,6 +128,8 @@ class Transient:
         """Solve the equations of one stride, linear around a guess."""
         equations = self._equations
         rows = self._voltages(guess)
+        bad = ~(np.isfinite(rows).all(axis=0) & np.isfinite(rate))
+        rows[:, bad] = 0.0
         leaving, slopes = equations.linearise(rows)
         if self._age % _RENEWAL == 0:
             self._kept = self._capacitances(rows)
@@ -139,9 +141,8 @@ class Transient:
         charging = np.einsum("nij,jn->ni", matrix, guess - past)
         if moves:
             charging += self._push(capacitances).T
-        bad = ~np.isfinite(charging).all(axis=1)
         slopes += matrix
-        slopes[bad] = np.eye(m)
+        slopes[bad], charging[bad] = np.eye(m), 0.0
         change = -np.linalg.solve(slopes, (leaving + charging)[..., None])[..., 0].T
         change[:, bad] = np.nan
         return np.asarray(change)

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from gmid.amplifier.ahead import measure_ahead
 from gmid.amplifier.checks import KINDS, Check, judge, spell_condition
 from gmid.amplifier.places import PLACES
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Supply
@@ -127,6 +128,7 @@ def review_plan(
         progress(f"{plan.name} in {len(cases)} conditions", 0, 1)
     found = predict_each(plan, cases, supply)
     predictions = {condition: one for (condition, _), one in zip(cases, found, strict=True)}
+    measure_ahead(found, kept.saturation_margin)
     checks = judge(found, kept, matching=matching)
     if progress:
         progress(f"{plan.name} judged", 1, 1)

@@ -16,6 +16,9 @@ import pytest
 
 from builders import Grid, rows, write_csv, write_recipe
 from gmid.sheet.data import Sheet
+from gmid.sweep.importing import import_recipe
+from gmid.sweep.recipe_file import read_recipe
+from gmid.table.saving import save_sweeps
 from gmid.tasks import sizing
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -47,6 +50,7 @@ passband = "0.2 dB"
 WRITERS = {
     "import": ["import", "recipe.toml", "-o", "out/t.h5"],
     "inspect": ["inspect", "a.csv", "--recipe", "out/r.toml"],
+    "figures": ["show", "small.h5", "--figures", "out"],
     "chart": ["chart", TABLE, "nmos", "--length", "1u", "--show", "ft", "-o", "out/a.svg"],
     "filter": ["filter", "filter.toml", "-o", "out"],
     "size": ["size", "request.toml", "-o", "out"],
@@ -64,6 +68,8 @@ def folder(tmp_path_factory):
     write_csv(folder / "a.csv", rows(Grid(length=(0.2e-6, 0.4e-6), vsb=(0.0, 0.6))))
     write_recipe(folder, "a.csv")
     (folder / "filter.toml").write_text(FILTER)
+    sweeps = import_recipe(read_recipe(folder / "recipe.toml"))
+    save_sweeps(folder / "small.h5", sweeps, process="invented")
     return folder
 
 
@@ -172,7 +178,10 @@ whole.{where} = stop
 
 @pytest.mark.parametrize(
     ("name", "where", "count"),
-    [("import", "_settle", 1), ("netlist", "_settle", 3), ("netlist", "_place", 3)],
+    [
+        ("import", "_settle", 1), ("netlist", "_settle", 3), ("netlist", "_place", 3),
+        ("figures", "_place", 1),
+    ],
 )  # fmt: skip
 def test_a_killed_command_leaves_whole_files(write, out, folder, name, where, count):
     assert write(name).code == 0
@@ -206,3 +215,22 @@ def test_only_one_place_opens_files_to_write():
         found = [line.strip() for line in code.splitlines() if opens.search(line)]
         if "files" not in path.relative_to(ROOT).parts:
             assert [line for line in found if "os.devnull" not in line] == [], path
+
+
+def test_answers_do_not_depend_on_the_number_of_threads(tmp_path):
+    """Neither on those of the linear algebra nor on the processes that measure."""
+    told = []
+    for threads, cores in (("1", "sorted(allowed)[:1]"), ("2", "allowed")):
+        code = (
+            "import os, sys\nallowed = os.sched_getaffinity(0)\n"
+            f"os.sched_setaffinity(0, {cores})\nfrom gmid.cli.app import main\nmain()"
+        )
+        done = subprocess.run(
+            [sys.executable, "-c", code, "check", str(PLAN), "--json"], cwd=tmp_path, text=True,
+            env={**os.environ, "PYTHONPATH": str(ROOT), "OMP_NUM_THREADS": threads,
+                 "OPENBLAS_NUM_THREADS": threads},
+            capture_output=True, check=True,
+        )  # fmt: skip
+        told.append(done.stdout)
+    assert told[0]
+    assert told[0] == told[1]

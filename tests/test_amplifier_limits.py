@@ -8,7 +8,6 @@ import numpy as np
 import pytest
 
 from gmid.amplifier import Prediction, Requirement, Variant, predict
-from gmid.amplifier.limits import find_swing_limit
 from gmid.condition import Condition
 from gmid.sheet.amplifiers import fill_amplifier, review_plan
 from gmid.sheet.data import AmplifierSheet, Sheet, to_plain
@@ -39,12 +38,12 @@ def fill(case: Case, swing: float) -> AmplifierSheet:
 @pytest.mark.parametrize("sense", ["resistors", "followers", "pairs"])
 def test_several_supplies_are_each_of_them(sense):
     whole = predict_case(draft(sense))
-    ends = find_swing_limit(whole)
+    ends = whole.output_swing().limit
     for k, level in enumerate(whole.voltage):
         one = predict_case(draft(sense), float(level))
         np.testing.assert_allclose(whole.sensing.peak[k], one.sensing.peak, rtol=1e-6)
         assert whole.sensing.starved[k] == one.sensing.starved
-        assert ends[k] == find_swing_limit(one)
+        assert ends[k] == one.output_swing().limit
 
 
 def test_a_smaller_sense_resistor_starves_a_follower_sooner():

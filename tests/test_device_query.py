@@ -78,6 +78,41 @@ def test_broadcasting(device):
     assert np.ndim(alone.id) == 0
 
 
+@pytest.mark.parametrize(
+    "options",
+    [
+        {"vgs": np.zeros(0)},
+        {"gm_over_id": np.zeros(0)},
+        {"current_density": np.zeros(0)},
+        {"id": np.zeros(0), "count": 1},
+        {"gm_over_id": 12.0, "length": np.zeros(0)},
+        {"vgs": np.zeros((0, 3))},
+    ],
+)
+@pytest.mark.parametrize("vds", [0.6, "diode"])
+def test_no_points_at_all(device, options, vds):
+    asked = {"length": 1e-6, "vds": vds, **options}
+    shape = np.broadcast_shapes(*(np.shape(v) for v in asked.values() if not isinstance(v, str)))
+    point = device.at(**asked)
+    for name, values in point.to_dict().items():
+        assert values.shape == shape, name
+        assert values.dtype == np.float64, name
+    assert point.scaled(id=1e-5).width.shape == shape
+    assert point.scaled(count=2).gm.shape == shape
+    frame = point.to_frame()
+    assert len(frame) == 0
+    assert list(frame.columns) == list(point.fields)
+    assert "shape" in repr(point)
+
+
+def test_no_points_at_all_still_refuse_what_is_wrong(device):
+    nothing = device.at(vgs=np.zeros(0), **BIAS)
+    with pytest.raises(UnknownName, match="Did you mean gm_over_id"):
+        nothing.read(["gm_over_idd"])
+    with pytest.raises(UsageFault, match="exactly one drive"):
+        device.at(vgs=np.zeros(0), gm_over_id=np.zeros(0), **BIAS)
+
+
 def test_many_lengths_and_few_agree(device):
     lengths = np.geomspace(0.5e-6, 2e-6, 60)
     together = device.at(length=lengths, vds=0.6, vgs=0.55).id

@@ -14,16 +14,20 @@ from gmid.errors import OutOfReach, UnknownName
 NINE = ("cgg", "cgd", "cgs", "cdg", "cdd", "cds", "csg", "csd", "css")
 
 
-def make(*, rest, few_axes=False):
+def make(*, rest, few_axes=False, gate_leaks=False):
     sweep = example_sweep(vsb=[0.0], length=[0.5e-6, 1e-6]) if few_axes else example_sweep()
     shares = (1.0, 0.2, 0.7, 0.3, 0.4, -0.02, 0.6, 0.1, 0.8)
     parts = {name: share * sweep["cgg"] for name, share in zip(NINE, shares, strict=True)}
     leak = 1e-12 * (1 + 0 * sweep["id"]) if rest else 0.0
+    if gate_leaks:
+        leak = leak - 1e-9 * np.exp(sweep.vgs - 2.0)
+        parts["gm"] = sweep["gm"] - 1e-9 * np.exp(sweep.vgs - 2.0)
     return Device(replace(sweep, values={**sweep.values, **parts, "id": sweep["id"] + leak}))
 
 
 @pytest.mark.parametrize("device", [make(rest=False), make(rest=True),
-                                    make(rest=True, few_axes=True)])  # fmt: skip
+                                    make(rest=True, few_axes=True),
+                                    make(rest=True, gate_leaks=True)])  # fmt: skip
 def test_points_one_by_one_are_those_of_a_batch(device):
     random = np.random.default_rng(2)
     sweep = device.sweep
@@ -41,6 +45,37 @@ def test_points_one_by_one_are_those_of_a_batch(device):
             if np.isfinite(values[place]):
                 assert getattr(point, name) == expected, name
         assert point.to_dict().keys() == together.keys()
+
+
+def test_gm_holds_what_leaks_through_the_gate():
+    device = make(rest=True, gate_leaks=True)
+    sweep, place = device.sweep, (1, 1, slice(2, None), slice(20, None, 3))
+    bias = {"length": sweep.length[1], "vsb": sweep.vsb[1], "vds": sweep.vds[2:, None],
+            "vgs": sweep.vgs[20::3]}  # fmt: skip
+    point = device.at(**bias)
+    np.testing.assert_allclose(point.gm, sweep["gm"][place], rtol=1e-4)
+    ratio = sweep["gm"][place] / sweep["id"][place]
+    np.testing.assert_allclose(point.gm_over_id, ratio, rtol=1e-4)
+    del bias["vgs"]
+    back = device.at(gm_over_id=point.gm_over_id[:, 4:], **bias)
+    np.testing.assert_allclose(back.vgs, point.vgs[:, 4:], atol=1e-9)
+    many = np.tile(point.gm_over_id[3, 4:], 400)
+    again = device.at(gm_over_id=many, **{**bias, "vds": sweep.vds[5]})
+    np.testing.assert_allclose(again.vgs, np.tile(point.vgs[3, 4:], 400), atol=1e-9)
+    small = device.model(sweep.length[1]).small_signal(0.7, 0.9, 0.0)
+    assert small.gm == pytest.approx(device.at(length=sweep.length[1], vgs=0.7, vds=0.9).gm)
+
+
+def test_attributes_and_readings_tell_the_same():
+    device = make(rest=True)
+    bias = {"length": 1.3e-6, "vds": 0.5, "vgs": 0.6}
+    point = device.at(**bias)
+    scaled = point.scaled(count=3)
+    assert scaled.id == 3 * point.id
+    assert point.read(["noise_thermal", "id"])["id"] == point.id
+    assert device.at(**bias).read(("id", "gm")).keys() == {"id", "gm"}
+    stored = tuple(device.sweep.values)
+    assert tuple(device.at(**bias).read(stored)) == stored
 
 
 def test_kinds_of_numbers_and_of_results():

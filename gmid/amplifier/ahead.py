@@ -7,7 +7,6 @@ from operator import attrgetter
 from typing import Any
 
 from gmid.amplifier.crew import Crew
-from gmid.amplifier.limits import find_swing_limit
 from gmid.amplifier.prediction import NOISE_FREQUENCIES, Prediction
 
 Question = tuple[Callable[..., object], tuple[Any, ...]]
@@ -41,7 +40,7 @@ def measure_ahead(found: Sequence[Prediction], margin: float) -> None:
     assert whole.signal is not None  # the others read it, and the bias point's linear networks
     read = attrgetter
     questions: list[Question] = [
-        (read("slew_rate"), ()), (find_swing_limit, (margin,)), (read("sensing"), ()),
+        (read("slew_rate"), ()), (Prediction.output_swing, (margin,)), (read("sensing"), ()),
         (Prediction.input_range, (margin,)), (read("settling_time"), ()),
         (Prediction.noise, (NOISE_FREQUENCIES,)), (read("loop_margin"), ()),
         (read("common_mode"), ()),

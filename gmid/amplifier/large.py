@@ -19,11 +19,15 @@ if TYPE_CHECKING:
     from gmid.amplifier.prediction import Prediction
 
 Array = NDArray[np.float64]
+Names = NDArray[np.str_]
 Start = dict[str, Array]
 """Node voltages to begin from [V]."""
 
 GAIN_DROP = float(np.sqrt(0.5))
 """Small-signal gain, over that at rest, at which the output swing ends [-]."""
+
+BY_GAIN = "gain"
+"""What ends a swing that no transistor ends."""
 
 _POINTS = 31
 _FINE = 7
@@ -66,20 +70,29 @@ class Swing:
         Peak at which the small-signal gain has fallen by 3 dB [V].
     by_saturation : ndarray, shape (...)
         Peak at which a transistor comes inside the saturation margin [V].
+    tightest : ndarray of str, shape (...)
+        The instance that does.
 
     Examples
     --------
-    >>> float(Swing(np.array(1.1), np.array(0.9)).peak)
-    0.9
+    >>> swing = Swing(np.array(1.1), np.array(0.9), np.array("direct_p"))
+    >>> float(swing.peak), str(swing.limit)
+    (0.9, 'direct_p')
     """
 
     by_gain: Array
     by_saturation: Array
+    tightest: Names
 
     @property
     def peak(self) -> Array:
         """The smaller of the two, which is judged [V]."""
         return np.minimum(self.by_gain, self.by_saturation)
+
+    @property
+    def limit(self) -> Names:
+        """What ends it: `BY_GAIN`, or the instance that comes inside the margin."""
+        return np.where(self.by_gain <= self.by_saturation, BY_GAIN, self.tightest)
 
 
 def _solve_at(
@@ -111,9 +124,14 @@ def _start_between(bias: Bias, end: NDArray[np.intp], share: Array) -> Start:
     return start
 
 
+def _all_headrooms(bias: Bias) -> Array:
+    """Give the headroom of every transistor, those on the first axis."""
+    names = (one.name for one in bias.circuit.transistors)
+    return np.stack([np.broadcast_to(bias.headroom(name), bias.batch) for name in names])
+
+
 def _smallest_headroom(bias: Bias) -> Array:
-    rows = [np.broadcast_to(bias.headroom(t.name), bias.batch) for t in bias.circuit.transistors]
-    return np.asarray(np.min(np.stack(rows), axis=0))
+    return np.asarray(np.min(_all_headrooms(bias), axis=0))
 
 
 def trace_curve(found: Prediction, input: Array) -> Curve:
@@ -175,19 +193,29 @@ def measure_swing(found: Prediction, margin: float) -> Swing:
     True
     """
     scale = 2.5 * found.voltage / np.abs(found.signal.dc_gain)
-    inputs = _along(np.linspace(0.0, 1.0, _POINTS) ** 1.5, scale)
-    bias = _solve_at(found, difference=inputs)
-    curve = _read_curve(bias, inputs)
+    grid = np.linspace(0.0, 1.0, _POINTS) ** 1.5
+    for count in (_POINTS // 2, _POINTS):  # what lies beyond the end takes long to solve
+        inputs = _along(grid[:count], scale)
+        bias = _solve_at(found, difference=inputs)
+        curve = _read_curve(bias, inputs)
+        left = _excesses(curve, curve.gain[:1], margin)
+        if all((~(excess > 0)).any(axis=0).all() for excess in left):
+            break
     share = np.linspace(0.0, 1.0, _FINE)
-    ends = [_first_end(excess) for excess in _excesses(curve, curve.gain[:1], margin)]
+    ends = [_first_end(excess) for excess in left]
     inputs = np.concatenate([_between(curve.input, end, share) for end in ends])
     starts = [_start_between(bias, end, share) for end in ends]
     start = {node: np.concatenate([one[node] for one in starts]) for node in starts[0]}
-    fine = _read_curve(_solve_at(found, difference=inputs, start=start), inputs)
+    bias = _solve_at(found, difference=inputs, start=start)
+    fine = _read_curve(bias, inputs)
     drop, room = _excesses(fine, curve.gain[:1], margin)
+    names = np.array([one.name for one in bias.circuit.transistors])
+    tightest = names[np.argmin(_all_headrooms(bias)[:, _FINE:], axis=0)]
+    end = _first_end(room[_FINE:])
     return Swing(
-        _cross(drop[:_FINE], fine.output[:_FINE]), _cross(room[_FINE:], fine.output[_FINE:])
-    )
+        _cross(drop[:_FINE], fine.output[:_FINE]), _cross(room[_FINE:], fine.output[_FINE:]),
+        np.take_along_axis(tightest, end[None], axis=0)[0],
+    )  # fmt: skip
 
 
 def _excesses(curve: Curve, gain: Array, margin: float) -> tuple[Array, Array]:

@@ -1,4 +1,4 @@
-"""What ends the output swing, and how far the sensing of the common mode goes with it."""
+"""How far the sensing of the common mode goes along with the outputs."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.amplifier.large import GAIN_DROP, trace_curve
+from gmid.amplifier.large import GAIN_DROP, Names
 from gmid.amplifier.signal import OUTPUT
 from gmid.circuit.bias import Bias, solve_bias
 from gmid.network import transfers
@@ -18,16 +18,10 @@ if TYPE_CHECKING:
     from gmid.amplifier.prediction import Prediction
 
 Array = NDArray[np.float64]
-Names = NDArray[np.str_]
-
-BY_GAIN = "gain"
-"""What ends a swing that no transistor ends."""
 
 _SENSING = ("follower", "follower_tail", "sense_pair", "sense_tail", "error_pair", "error_tail")
 _POINTS = 10
 _FINE = 7
-_STEPS = 8
-_CLOSE = 1e-3  # [V]
 
 
 @dataclass(frozen=True, eq=False)
@@ -97,48 +91,6 @@ def measure_sensing(found: Prediction) -> Sensing:
     peak, index = _cross(left, np.broadcast_to(bias.voltage(*OUTPUT), left.shape))
     starved = np.where(holds, "", _find_starved(found, bias, index))
     return Sensing(np.where(holds, np.inf, peak), np.asarray(starved, dtype=np.str_))
-
-
-def find_swing_limit(found: Prediction, margin: float = 0.05) -> Names:
-    """Say what ends the output swing.
-
-    Parameters
-    ----------
-    found : Prediction
-        The amplifier.
-    margin : float
-        Headroom that every transistor keeps [V].
-
-    Returns
-    -------
-    ndarray of str, shape (...)
-        ``gain`` where the gain falls by 3 dB first, or the instance that comes inside the margin.
-
-    Examples
-    --------
-    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> from gmid.amplifier.predicting import predict
-    >>> found = predict(example_plan(), example_devices(), example_supply(), voltage=1.8)
-    >>> str(find_swing_limit(found))
-    'direct_p'
-    """
-    return found.keep(("swing limit", margin), lambda whole: _trace_limit(whole, margin))
-
-
-def _trace_limit(found: Prediction, margin: float) -> Names:
-    swing = found.output_swing(margin)
-    wanted = np.maximum(np.minimum(swing.by_saturation, swing.by_gain), 0.0)
-    inputs = np.broadcast_to(wanted / found.signal.dc_gain, found.batch)
-    for _ in range(_STEPS):
-        curve = trace_curve(found, inputs[None])
-        short = wanted - curve.output[0]
-        if np.all(np.abs(short) < _CLOSE):
-            break
-        inputs = inputs + short / curve.gain[0]
-    bias = _solve_at(found, inputs, None)
-    names = np.array([one.name for one in bias.circuit.transistors])
-    rooms = np.stack([np.broadcast_to(bias.headroom(name), found.batch) for name in names])
-    return np.where(swing.by_gain <= swing.by_saturation, BY_GAIN, names[np.argmin(rooms, axis=0)])
 
 
 def _solve_at(found: Prediction, difference: Array, start: Mapping[str, Array] | None) -> Bias:

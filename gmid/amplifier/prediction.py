@@ -92,14 +92,14 @@ class Prediction:
     origin: tuple[Prediction, int] | None = None
     _kept: dict[tuple[Any, ...], Any] = field(default_factory=dict, init=False, repr=False)
 
-    def keep(self, key: tuple[Any, ...], measure: Callable[[Prediction], Value]) -> Value:
+    def _keep(self, key: tuple[Any, ...], measure: Callable[[Prediction], Value]) -> Value:
         """Measure something once, for all conditions together where it can be."""
         if key not in self._kept:
             if self.origin is None:
                 self._kept[key] = measure(self)
             else:
                 whole, k = self.origin
-                self._kept[key] = take_condition(whole.keep(key, measure), k, len(whole.batch))
+                self._kept[key] = take_condition(whole._keep(key, measure), k, len(whole.batch))
         found: Value = self._kept[key]
         return found
 
@@ -163,7 +163,7 @@ class Prediction:
     @property
     def node_voltages(self) -> dict[str, Array]:
         """Voltage of every node [V], those inside stacks included."""
-        return self.keep(("nodes",), lambda found: found.bias.voltages)
+        return self._keep(("nodes",), lambda found: found.bias.voltages)
 
     @cached_property
     def network(self) -> Network:
@@ -190,14 +190,14 @@ class Prediction:
         """The differential path."""
         conductance = 1.0 / np.minimum(self.plan.load_resistance, NO_RESISTOR)
         capacitance = np.asarray(self.plan.load_capacitance, dtype=np.float64)
-        return self.keep(("signal",), lambda found: measure_signal(
+        return self._keep(("signal",), lambda found: measure_signal(
             found.differential_half, conductance, capacitance
         ))  # fmt: skip
 
     @property
     def common_mode(self) -> CommonModeLoop:
         """The common-mode loop."""
-        return self.keep(("common mode",), lambda found: measure_common_mode(
+        return self._keep(("common mode",), lambda found: measure_common_mode(
             found.common_half, found.settled_error, loop_network=found.loop_half
         ))  # fmt: skip
 
@@ -209,7 +209,7 @@ class Prediction:
         too good; here both a voltage and a current are injected.  The smaller of the margins
         with and without the load resistors, since in a filter those carry no common-mode current.
         """
-        return self.keep(("loop margin",), lambda found: np.minimum(
+        return self._keep(("loop margin",), lambda found: np.minimum(
             measure_margin(found.loop_half, PROBE),
             measure_margin(found.loop_half.with_values({"rlp": NO_RESISTOR}), PROBE),
         ))  # fmt: skip
@@ -239,14 +239,14 @@ class Prediction:
             `input_density` [V/sqrt(Hz)] is referred to the differential input.
         """
         f = tuple(np.ravel(np.asarray(frequency, dtype=np.float64)).tolist())
-        return self.keep(
+        return self._keep(
             ("noise", f), lambda found: measure_noise(found.differential_half, np.array(f))
         )
 
     @property
     def supply_current(self) -> Array:
         """Current drawn from the supply, the reference included [A]."""
-        return self.keep(("supply",), lambda found: -np.asarray(found.bias.source_current("vdd")))
+        return self._keep(("supply",), lambda found: -np.asarray(found.bias.source_current("vdd")))
 
     @property
     def power(self) -> Array:
@@ -256,7 +256,7 @@ class Prediction:
     @property
     def headroom(self) -> dict[str, Array]:
         """By instance, vds beyond the edge of saturation [V]; of a stack, its upper unit's."""
-        return self.keep(("headroom",), lambda found: {
+        return self._keep(("headroom",), lambda found: {
             one.name: found.bias.headroom(one.name) for one in found.circuit.transistors
         })  # fmt: skip
 
@@ -283,7 +283,7 @@ class Prediction:
         names = [one.name for one in self.circuit.transistors]
         if name not in names:
             raise UnknownName(f"there is no instance {name}.", hint=advise(name, names))
-        return self.keep(("id", name), lambda found: np.abs(found.bias.id(name)))
+        return self._keep(("id", name), lambda found: np.abs(found.bias.id(name)))
 
     @cached_property
     def balance(self) -> Array:
@@ -304,12 +304,12 @@ class Prediction:
     @property
     def slew_rate(self) -> Array:
         """Slew rate of the differential output, half-way through a full step of the bench [V/s]."""
-        return self.keep(("slew",), measure_slew_rate)
+        return self._keep(("slew",), measure_slew_rate)
 
     @property
     def settling_time(self) -> Array:
         """Time in which a small step of the step bench settles to 1 % [s]."""
-        return self.keep(("settling",), measure_settling)
+        return self._keep(("settling",), measure_settling)
 
     def output_swing(self, margin: float = 0.05) -> Swing:
         """Measure how far the differential output goes.
@@ -324,12 +324,12 @@ class Prediction:
         Swing
             By gain and by saturation.
         """
-        return self.keep(("swing", margin), lambda found: measure_swing(found, margin))
+        return self._keep(("swing", margin), lambda found: measure_swing(found, margin))
 
     @property
     def sensing(self) -> Sensing:
         """How far the outputs go apart until the common-mode loop no longer sees them rightly."""
-        return self.keep(("sensing",), measure_sensing)
+        return self._keep(("sensing",), measure_sensing)
 
     def input_range(self, margin: float = 0.05) -> InputRange:
         """Measure the input common-mode range.
@@ -344,7 +344,7 @@ class Prediction:
         InputRange
             Its ends.
         """
-        return self.keep(("input", margin), lambda found: measure_input_range(found, margin))
+        return self._keep(("input", margin), lambda found: measure_input_range(found, margin))
 
     def third_harmonic(self, amplitude: ArrayLike) -> Array:
         """Measure the static third harmonic of the open-loop bench.
@@ -375,7 +375,7 @@ class Prediction:
             Its sigma, and the part of each place.
         """
         key = ("offset", *sorted(matching.items()))
-        return self.keep(key, lambda found: measure_offset(found, matching))
+        return self._keep(key, lambda found: measure_offset(found, matching))
 
     def rejection(self, matching: Mapping[str, Matching]) -> Rejection:
         """Measure how far mismatch spoils the rejection of supply and input common mode.
@@ -391,7 +391,7 @@ class Prediction:
             At one sigma.
         """
         key = ("rejection", *sorted(matching.items()))
-        return self.keep(key, lambda found: measure_rejection(found, matching))
+        return self._keep(key, lambda found: measure_rejection(found, matching))
 
     def __repr__(self) -> str:
         low, high = float(np.min(self.voltage)), float(np.max(self.voltage))

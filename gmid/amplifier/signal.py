@@ -40,7 +40,7 @@ INJECTION = "inject"
 """Current source of 1 A from `von` into `vop`."""
 
 _BAND = (1.0, 1e12)
-_PEAK_GRID = np.geomspace(1e4, 1e10, 121)
+_PEAK_GRID = np.geomspace(1e4, 1e10, 61)
 
 
 @dataclass(frozen=True, eq=False)
@@ -299,7 +299,7 @@ def _find_peak(response: Transfer) -> Array:
     size = np.abs(response.scan(_PEAK_GRID))
     k = np.argmax(size, axis=-1)
     step = np.log(_PEAK_GRID[1] / _PEAK_GRID[0])
-    near = _PEAK_GRID[k][..., None] * np.exp(np.linspace(-step, step, 13))
+    near = _PEAK_GRID[k][..., None] * np.exp(np.linspace(-step, step, 25))
     best = np.argmax(np.abs(response.scan(near)), axis=-1)[..., None]
     return np.asarray(np.abs(response(np.take_along_axis(near, best, axis=-1)))[..., 0])
 

@@ -25,8 +25,9 @@ from gmid.device.curves import (
     quintic_curves,
     slope_operator,
 )
+from gmid.device.gate_reader import GateReader, continue_current, make_reader
 from gmid.device.grid import Lines
-from gmid.device.reading import Reading, cubic_reading, quintic_reading, read_quintic
+from gmid.device.reading import cubic_reading, quintic_reading, read_quintic
 from gmid.device.roots import solve_newton
 from gmid.device.smoothness import is_noisy, slopes_agree
 from gmid.device.spline import Array, SplineAxis, uniform_axis
@@ -39,6 +40,16 @@ _STEPS = (0.0125, 0.025)
 """Finest and coarsest step of the shifted gate axis [V]."""
 
 _MOST_SPANS = 600
+
+
+_LEAST_SHARE = 1e-3
+"""Part of the least current of a device that conducts from which on gds tells its slope."""
+
+_SMALL_SHARE = 1e-6
+"""Part of gm below which that of the current at vds = 0 is none."""
+
+AT_REST = ("rest", "rest_gm")
+"""What does not know vds: the current at vds = 0 and its slope by vgs."""
 
 LOGARITHMIC = frozenset({"gds", "noise_thermal"})
 """Quantities whose logarithm is interpolated."""
@@ -82,9 +93,23 @@ class AlignedGrid:
         return bool(np.any(self.channel.rest != 0))
 
     @cached_property
+    def has_rest_gm(self) -> bool:
+        """Whether the current at vds = 0 follows the gate, as that of a leaking gate does."""
+        if not self.has_rest or "gm" not in self.sweep:
+            return False
+        largest = np.abs(self.sweep["gm"]).max(axis=2)
+        seen = np.abs(self.channel.rest_gm) > _SMALL_SHARE * largest
+        return bool(np.any(seen & self._conducting[:, :, -1]))
+
+    @cached_property
     def _conducting(self) -> NDArray[np.bool_]:
+        return np.asarray(self.channel.strength > self._least_current)
+
+    @cached_property
+    def _least_current(self) -> Array:
+        """Current from which on a device conducts [A], shape (n_length, 1, 1, 1)."""
         floor = 1e-3 * THRESHOLD_CURRENT * self.sweep.unit.width / self.sweep.length
-        return np.asarray(self.channel.strength > floor[:, None, None, None])
+        return np.asarray(floor[:, None, None, None])
 
     @cached_property
     def noisy(self) -> bool:
@@ -160,14 +185,8 @@ class AlignedGrid:
         return np.asarray(self.threshold[:, :, None] + self.gate.points)
 
     @cached_property
-    def _solving(self) -> Reading:
-        """Matrices from values along vgs to coefficients along the shifted gate axis."""
-        found = np.empty((2, *self.threshold.shape, self.gate.size, self.sweep.vgs.size))
-        for length, places in enumerate(self._places):
-            reading = cubic_reading(self.sweep.vgs, places)
-            for kind, (part,) in enumerate((reading.values, reading.slopes)):
-                np.matmul(self.gate.operator, part, out=found[kind, length])
-        return Reading((found[0],), (found[1],))
+    def _reader(self) -> GateReader:
+        return make_reader(self.sweep.vgs, self._places, self.gate.operator, self.threshold)
 
     @cached_property
     def _between(self) -> tuple[Array, Array] | None:
@@ -183,7 +202,8 @@ class AlignedGrid:
         lines, tilts = (np.moveaxis(part, 2, 3) for part in (q, slopes))
         if not slopes_agree(points, lines, tilts, np.moveaxis(usable, 2, 3), share=0.5):
             return None
-        slopes = np.where(usable, slopes, slope_operator(points) @ q)
+        flows = self.channel.strength > _LEAST_SHARE * self._least_current
+        slopes = np.where(flows, slopes, slope_operator(points) @ q)
         reading = quintic_reading(points, drain_coordinate(self.drain))
         value, steep = (
             on_values @ q + on_slopes @ slopes
@@ -201,18 +221,17 @@ class AlignedGrid:
     @cached_property
     def _current(self) -> tuple[Array, Array]:
         """Coefficients of the smooth variable and of its slope by vgs, guided by gm."""
-        vgs, q, steep = self.sweep.vgs, self.channel.logarithm, self.channel.gate_ratio
-        by_slopes, found = slope_operator(vgs)[-1:].T, np.empty((2, *q.shape[:3], self.gate.size))
-        for length, places in enumerate(self._places):
-            here, tilt = q[length], steep[length]
-            read = read_quintic(vgs, places[None], here[None], tilt[None])[:, 0]
-            beyond = places[:, None] - vgs[-1]
-            first = int(np.argmax(np.append((beyond > 0).any(axis=(0, 1)), True)))
-            beyond = beyond[..., first:]
-            end = (here[..., -1:], tilt[..., -1:], tilt @ by_slopes)
-            for part, bent in zip(read, follow_bent(*end, beyond), strict=True):
-                part[..., first:] = np.where(beyond > 0, bent, part[..., first:])
-            np.matmul(read, self.gate.operator.T, out=found[:, length])
+        vgs, places = self.sweep.vgs, self._places
+        q, steep = self.channel.logarithm, self.channel.gate_ratio
+        read = read_quintic(vgs, places, q, steep)
+        beyond = places[:, :, None] - vgs[-1]
+        first = int(np.argmax(np.append((beyond > 0).any(axis=(0, 1, 2)), True)))
+        beyond = beyond[..., first:]
+        end = (q[..., -1:], steep[..., -1:], steep @ slope_operator(vgs)[-1:].T)
+        for part, bent in zip(read, follow_bent(*end, beyond), strict=True):
+            part[..., first:] = np.where(beyond > 0, bent, part[..., first:])
+        continue_current(vgs, places, self.threshold, (q, steep), read)
+        found = read @ self.gate.operator.T
         return found[0], found[1]
 
     def lines(self, names: Sequence[str]) -> Iterator[Lines]:
@@ -221,12 +240,13 @@ class AlignedGrid:
         Parameters
         ----------
         names : sequence of str
-            Quantities of the sweep, and ``rest`` for the current at vds = 0.
+            Quantities of the sweep, ``rest`` for the current at vds = 0, and ``rest_gm`` for
+            its slope.
 
         Yields
         ------
         Lines
-            ``rest`` has one drain point.
+            The last two have one drain point.
 
         Examples
         --------
@@ -234,12 +254,13 @@ class AlignedGrid:
         >>> next(AlignedGrid(example_sweep()).lines(["gmb"])).coarse.shape[:3]
         (3, 3, 13)
         """
-        self.sweep.fetch([name for name in names if name != "rest"])
+        self.sweep.fetch([name for name in names if name not in AT_REST])
         yield from (self._line_up(name) for name in names)
 
     def _line_up(self, name: str) -> Lines:
-        if name == "rest":
-            return Lines(self._read(self.channel.rest[:, :, None]))
+        if name in AT_REST:
+            rest = self.channel.rest if name == "rest" else self.channel.rest_gm
+            return Lines(self._read(rest[:, :, None]))
         if name == "id" or (name == "gm" and self.sloped):
             return self._guided(name)
         values = self._transform(name)
@@ -257,8 +278,7 @@ class AlignedGrid:
         """Give the current, or gm where it is the current's slope."""
         fine = None
         if self._lift is not None:
-            solving = self._solving.values if name == "id" else self._solving.slopes
-            fine = _apply(solving[0], self._lift)
+            fine = self._reader.read(self._lift, slopes=name == "gm")
         if self.sloped:
             return Lines(self._current[0 if name == "id" else 1], fine)
         return Lines(self._read(self.channel.logarithm), fine)
@@ -298,7 +318,7 @@ class AlignedGrid:
     def _read(self, values: Array) -> Array:
         """Read values over (length, vsb, vds, vgs) along the gate axis, as coefficients."""
         if not self.noisy:
-            return _apply(self._solving.values[0], values)
+            return self._reader.read(values)
         return self._lay(values).values(self._places[:, :, None]) @ self.gate.operator.T
 
 
@@ -309,11 +329,6 @@ def _refine(raw: bytes) -> Array:
     reading = cubic_reading(drain_coordinate(vds), drain_coordinate(refine_drain(vds)))
     reading.values[0].flags.writeable = False
     return reading.values[0]
-
-
-def _apply(matrices: Array, lines: Array) -> Array:
-    """Apply the matrix of each length and vsb to all lines over vgs there."""
-    return np.asarray(lines @ np.swapaxes(matrices, -1, -2))
 
 
 def gate_reach(grid: AlignedGrid) -> tuple[float, float]:

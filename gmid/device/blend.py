@@ -133,6 +133,11 @@ class BlendedGrid:
         return any(part.has_rest for part in self.parts)
 
     @property
+    def has_rest_gm(self) -> bool:
+        """Whether that current follows the gate."""
+        return any(part.has_rest_gm for part in self.parts)
+
+    @property
     def notes(self) -> tuple[str, ...]:
         """That it is interpolated, and what the parts have to say."""
         temperatures = [f"{part.condition.temperature:g}" for part in self.parts]

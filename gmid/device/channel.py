@@ -69,6 +69,12 @@ class Channel:
         return np.array(current) if self.begins_at_zero else np.zeros(current.shape)
 
     @cached_property
+    def rest_gm(self) -> Array:
+        """Slope of `rest` by vgs, which is gm at vds = 0 [S]; zero where it is unknown."""
+        gm = self.sweep["gm"][:, :, 0]
+        return np.array(gm) if self.begins_at_zero else np.zeros(gm.shape)
+
+    @cached_property
     def logarithm(self) -> Array:
         """The smooth variable q = ln(channel current / saturation factor), shape of the grid."""
         current = self.sweep["id"] - self.rest[:, :, None]
@@ -102,10 +108,8 @@ class Channel:
 
     @cached_property
     def gate_ratio(self) -> Array:
-        """Ratio of gm to the channel's current [1/V]; the limit dq/dvgs stands at vds = 0."""
-        gm = self.sweep["gm"]
-        if self.begins_at_zero:
-            gm = gm - gm[:, :, :1]
+        """Ratio of the channel's gm to its current [1/V]; at vds = 0 the limit dq/dvgs."""
+        gm = self.sweep["gm"] - self.rest_gm[:, :, None]
         return self._ratio(gm, 3, self.sweep.vgs)
 
     def bulk_ratio(self) -> Array:

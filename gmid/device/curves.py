@@ -214,7 +214,7 @@ def _make_operator(raw: bytes) -> Array:
 
 
 def quintic_curves(points: Array, values: Array, slopes: Array) -> Curves:
-    """Lay a quintic spline through values and slopes, its third derivative continuous.
+    """Lay quintics through values and slopes, their second derivatives taken from near by.
 
     Parameters
     ----------
@@ -237,8 +237,7 @@ def quintic_curves(points: Array, values: Array, slopes: Array) -> Curves:
 
     References
     ----------
-    The condition at inner points is that of two quintic Hermite pieces meeting with equal
-    third derivatives; Spaeth, One Dimensional Spline Interpolation (1995), from memory.
+    Hermite interpolation; de Boor, A Practical Guide to Splines (1978), chapter I (from memory).
     """
     by_values, by_slopes = bend_operators(points)
     bends = values @ by_values.T + slopes @ by_slopes.T
@@ -271,8 +270,13 @@ def bend_operators(points: Array) -> tuple[Array, Array]:
     Returns
     -------
     by_values, by_slopes : ndarray, shape (n, n)
-        Second derivatives = the one times values plus the other times slopes; at both ends
-        they are those of a spline of the slopes.
+        Second derivatives = the one times values plus the other times slopes: those of the
+        polynomial through values and slopes of a point and of its two neighbours.
+
+    Notes
+    -----
+    A spline of continuous third derivative would carry the knee between triode and saturation,
+    where that falls between two points, on to the cells around it.
 
     Examples
     --------
@@ -287,25 +291,20 @@ def bend_operators(points: Array) -> tuple[Array, Array]:
 def _make_bends(raw: bytes) -> tuple[Array, Array]:
     """Solve for the second derivatives of some points once, for every quantity."""
     points = np.frombuffer(raw)
-    width, count = np.diff(points), points.size
-    matrix = np.zeros((count, count))
-    matrix[0, 0] = matrix[-1, -1] = 1.0
-    inner = np.arange(1, count - 1)
-    matrix[inner, inner - 1] = -3 / width[:-1]
-    matrix[inner, inner] = 9 * (1 / width[:-1] + 1 / width[1:])
-    matrix[inner, inner + 1] = -3 / width[1:]
-    by_values, by_slopes = np.zeros((count, count)), np.array(slope_operator(points))
-    by_values[inner, inner - 1] = 60 / width[:-1] ** 3
-    by_values[inner, inner] = -60 / width[:-1] ** 3 - 60 / width[1:] ** 3
-    by_values[inner, inner + 1] = 60 / width[1:] ** 3
-    by_slopes[1:-1] = 0.0
-    by_slopes[inner, inner - 1] = 24 / width[:-1] ** 2
-    by_slopes[inner, inner] = 36 / width[:-1] ** 2 - 36 / width[1:] ** 2
-    by_slopes[inner, inner + 1] = -24 / width[1:] ** 2
-    right = np.hstack((by_values, by_slopes))
-    solved = np.asarray(np.linalg.solve(matrix, right), dtype=np.float64)
-    solved.flags.writeable = False
-    return solved[:, :count], solved[:, count:]
+    count = points.size
+    first = np.clip(np.arange(count) - 1, 0, count - 3)
+    rows, near = np.arange(count)[:, None], first[:, None] + np.arange(3)
+    width = points[first + 2] - points[first]
+    place = (points[near] - points[:, None]) / width[:, None]
+    power = np.arange(6)
+    values = place[..., None] ** power
+    slopes = power * place[..., None] ** np.maximum(power - 1, 0)
+    weights = 2 * np.linalg.inv(np.concatenate((values, slopes), axis=1))[:, 2]
+    by_values, by_slopes = np.zeros((2, count, count))
+    by_values[rows, near] = weights[:, :3] / width[:, None] ** 2
+    by_slopes[rows, near] = weights[:, 3:] / width[:, None]
+    by_values.flags.writeable = by_slopes.flags.writeable = False
+    return by_values, by_slopes
 
 
 def monotone_curves(points: Array, values: Array) -> Curves:

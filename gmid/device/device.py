@@ -301,6 +301,8 @@ class Device:
         if diode:
             vds = np.full(vds.shape, sweep.vds[0])
         length, _, vds, vsb = settle_axes(sweep, length, None, vds, vsb)
+        if not target.size:
+            return target, length, target if diode else vds, vsb
         if diode:
             gate = solve_diode(self._interpolant, name, target, length, vsb)
             return gate, length, gate, vsb
@@ -310,6 +312,8 @@ class Device:
         """Answer fields of an operating point, for one unit."""
         if isinstance(point.vgs, np.float64):
             return self._single.compute(point, names)
+        if not np.size(point.vgs):
+            return {name: np.zeros(point.shape) for name in names}
         needs = list_needs(names, self._stored)
         bias = [np.ravel(part) for part in (point.length, point.vgs, point.vds, point.vsb)]
         values = self._interpolant.quantities(needs, *bias)

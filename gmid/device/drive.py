@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from gmid.device.aligned import AT_REST
 from gmid.device.interpolant import Interpolant
 from gmid.device.spline import Array
 
@@ -49,6 +50,11 @@ class Drive:
         return self.name != "vdsat" and self.interpolant.grid.has_rest
 
     @property
+    def has_rest_gm(self) -> bool:
+        """Whether the slope of that current enters as well."""
+        return self.name == "gm_over_id" and self.interpolant.grid.has_rest_gm
+
+    @property
     def tables(self) -> tuple[str, ...]:
         """Transformed quantities that it is made of."""
         if self.name == "vdsat":
@@ -59,8 +65,10 @@ class Drive:
 
     @property
     def columns(self) -> tuple[str, ...]:
-        """The same, with the current at vds = 0 where that enters."""
-        return (*self.tables, "rest") if self.has_rest else self.tables
+        """The same, with the current at vds = 0 and its slope where those enter."""
+        if not self.has_rest:
+            return self.tables
+        return (*self.tables, *(AT_REST if self.has_rest_gm else AT_REST[:1]))
 
     def scale(self, value: Array) -> Array:
         """Map the drive to the variable that is solved for: currents by their logarithm.
@@ -150,7 +158,10 @@ class Drive:
         channel *= factor
         total = channel + columns[2]
         share: Array = np.divide(channel, total, out=np.ones(total.shape), where=total > 0)
-        return first * share
+        if not self.has_rest_gm:
+            return first * share
+        part: Array = np.divide(columns[3], total, out=np.zeros(total.shape), where=total > 0)
+        return first * share + part
 
     def bounds(
         self, low: Array, high: Array, least_factor: Array, most_factor: Array
@@ -188,7 +199,15 @@ class Drive:
             corners = np.stack([ratio * share for ratio in (low[0], high[0]) for share in shares])
         good = (parts > -1.0) & np.isfinite(corners).all(axis=0)
         found = np.where(good, corners.min(axis=0), -np.inf)
-        return found, np.where(good, corners.max(axis=0), np.inf)
+        top = np.where(good, corners.max(axis=0), np.inf)
+        if not self.has_rest_gm:
+            return found, top
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            totals = (least + low[2], most + high[2])
+            parts = np.stack([gm / total for gm in (low[3], high[3]) for total in totals])
+        good = (totals[0] > 0) & np.isfinite(parts).all(axis=0)
+        found = np.where(good, found + parts.min(axis=0), -np.inf)
+        return found, np.where(good, top + parts.max(axis=0), np.inf)
 
     def slopes(self, columns: Array, slopes: Array, factor: Array) -> Array:
         """Give the derivative of the scaled drive.
@@ -226,4 +245,8 @@ class Drive:
         good = total > 0
         safe = np.where(good, total, 1.0)
         tilt = channel * (slopes[1] * rest - slopes[2]) / safe**2
-        return np.where(good, slope * channel / safe + first * tilt, slope)
+        found = slope * channel / safe + first * tilt
+        if self.has_rest_gm:
+            growth = (channel * slopes[1] + slopes[2]) / safe
+            found += (slopes[3] - columns[3] * growth) / safe
+        return np.where(good, found, slope)

@@ -70,6 +70,10 @@ class Grid(Protocol):
         """Whether any current flows at vds = 0."""
 
     @property
+    def has_rest_gm(self) -> bool:
+        """Whether that current follows the gate."""
+
+    @property
     def refinement(self) -> Array:
         """Matrix from values on the sweep's vds to values on `drain`."""
 
@@ -79,7 +83,7 @@ class Grid(Protocol):
         Parameters
         ----------
         names : sequence of str
-            Quantities of the sweep, and ``rest``.
+            Quantities of the sweep, ``rest`` and ``rest_gm``.
 
         Yields
         ------

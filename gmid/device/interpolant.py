@@ -12,6 +12,7 @@ from functools import cached_property
 
 import numpy as np
 
+from gmid.device.aligned import AT_REST
 from gmid.device.collapsed import Collapsed, expand_spans
 from gmid.device.coordinates import (
     bulk_coordinate,
@@ -233,7 +234,7 @@ class Interpolant:
         others: dict[int, Array] = {}
         for place, (name, lines) in enumerate(zip(names, self._lines(names), strict=True)):
             coarse[place] = 0.0
-            if name == "rest":
+            if name in AT_REST:
                 others[place] = self._settle_lines(lines.parts[0], settling)
                 continue
             if lines.coarse is not None:
@@ -375,8 +376,8 @@ class Interpolant:
         if ON_CURRENT.intersection(wanted) and "id" not in wanted:
             wanted.insert(0, "id")
         if "id" in wanted and self.grid.has_rest:
-            wanted.append("rest")
+            wanted += AT_REST if "gm" in wanted and self.grid.has_rest_gm else AT_REST[:1]
         found = self.tables(wanted, length, vgs, vds, vsb)
         raw = {name: found[:, column] for column, name in enumerate(wanted)}
-        rest = raw.pop("rest", None)
-        return restore(raw, vds, rest, self.grid.condition.thermal_voltage)
+        rest, rest_gm = (raw.pop(name, None) for name in AT_REST)
+        return restore(raw, vds, rest, self.grid.condition.thermal_voltage, rest_gm)

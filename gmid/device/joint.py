@@ -158,6 +158,11 @@ class JointModel:
     def _merged(self) -> MergedModel | None:
         return MergedModel.of(self.parts)
 
+    @cached_property
+    def _uniform(self) -> MergedModel | None:
+        """The merged model where it can read small signals too."""
+        return self._merged if self._merged is not None and self._merged.is_uniform else None
+
     def current_and_derivatives(
         self, vgs: ArrayLike, vds: ArrayLike, vsb: ArrayLike, which: ArrayLike = 0
     ) -> tuple[Array, Array, Array, Array, NDArray[np.bool_]]:
@@ -199,6 +204,8 @@ class JointModel:
         SmallSignal
             Of one unit.
         """
+        if self._uniform is not None:
+            return self._uniform.small_signal(vgs, vds, vsb, which)
         names = [field.name for field in fields(SmallSignal)]
 
         def read(model: DeviceModel, *bias: Array) -> tuple[Array, ...]:
@@ -222,6 +229,8 @@ class JointModel:
         ndarray, shape (...)
             [V].
         """
+        if self._uniform is not None:
+            return self._uniform.vdsat(vgs, vds, vsb, which)
         return self._each(lambda model, *bias: (model.vdsat(*bias),), vgs, vds, vsb, which)[0]
 
     def covers(
@@ -241,6 +250,8 @@ class JointModel:
         ndarray of bool, shape (...)
             True inside.
         """
+        if self._merged is not None:
+            return self._merged.covers(vgs, vds, vsb, which)
         found = self._each(lambda model, *bias: (model.covers(*bias),), vgs, vds, vsb, which)
         return np.asarray(found[0], dtype=bool)
 

@@ -1,4 +1,4 @@
-"""The current of a device in several conditions, read from one array of coefficients.
+"""A device in several conditions, read from one array of coefficients.
 
 The conditions share length, vds and vsb axes; each has its own shifted gate axis, whose spans are
 equally wide, so that places are counted in spans from each one's lower end.
@@ -78,7 +78,7 @@ class MergedSplines(Collapsed):
 
 @dataclass(frozen=True, eq=False)
 class MergedModel(DeviceModel):
-    """A device in several conditions at the same lengths, for its current alone.
+    """A device in several conditions at the same lengths.
 
     Parameters
     ----------
@@ -138,7 +138,16 @@ class MergedModel(DeviceModel):
         key = tuple(names)
         if key not in self._made:
             self._made[key] = MergedSplines.of([part.splines(key) for part in self.parts])
+            for part in self.parts if len(key) > 1 else ():
+                part.forget(key)
         return self._made[key]
+
+    @property
+    def is_uniform(self) -> bool:
+        """Whether all conditions store the same quantities, so that small signals merge too."""
+        grids = [part.interpolant.grid for part in self.parts]
+        kinds = {(tuple(one.sweep.values), one.has_rest_gm) for one in grids}
+        return len(kinds) == 1
 
     @property
     def has_rest(self) -> bool:

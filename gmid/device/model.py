@@ -146,10 +146,13 @@ class DeviceModel:
         turned, bias = _turn(bias)
         within = self._clip(bias)
         names = ["id", *(name for name in sweep.values if name not in ("id", "vth", "vdsat"))]
+        if self.interpolant.grid.has_rest_gm:
+            names.append("rest_gm")
         spline = self.splines(names)
         table = spline.values(spline.locate(index, *within))
         raw = {name: table[:, column] for column, name in enumerate(names)}
-        found = restore(raw, within[1], None, self.interpolant.grid.condition.thermal_voltage)
+        thermal_voltage = self.thermal_voltage(index)
+        found = restore(raw, within[1], None, thermal_voltage, raw.pop("rest_gm", None))
         slopes = np.stack((found["id"], found["gm"], found["gds"], -found["gmb"]))
         _, gm, gds, by_vsb = _turn_back(slopes, turned)
         matrix = assemble_matrix(sweep, found)
@@ -263,6 +266,16 @@ class DeviceModel:
         if key not in self._made:
             self._made[key] = self.interpolant.collapse(key, self.length)
         return self._made[key]
+
+    def forget(self, names: Sequence[str]) -> None:
+        """Give back the memory of splines, which are made again when asked for.
+
+        Parameters
+        ----------
+        names : sequence of str
+            As given to `splines`.
+        """
+        self._made.pop(tuple(names), None)
 
     @property
     def has_rest(self) -> bool:

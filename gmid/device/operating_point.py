@@ -64,8 +64,8 @@ class OperatingPoint:
     >>> from gmid.device.device import Device
     >>> from gmid.device.example import example_sweep
     >>> point = Device(example_sweep()).at(length=1e-6, vds=0.6, gm_over_id=15)
-    >>> float(point.scaled(id=10e-6).width.round(8))
-    7.54e-06
+    >>> float(point.scaled(id=10e-6).width.round(9))
+    7.545e-06
     """
 
     label: str
@@ -120,7 +120,12 @@ class OperatingPoint:
         return (*BIAS, *self.known)
 
     def __getattr__(self, name: str) -> Array:
-        if name.startswith("_") or "known" not in self.__dict__:
+        held = self.__dict__
+        single = held.get("_single")
+        if single is not None and single.fill(held, name):
+            value: Array = held[name]
+            return value
+        if name.startswith("_") or "known" not in held:
             raise AttributeError(name)
         return self.read([name])[name]
 
@@ -151,12 +156,18 @@ class OperatingPoint:
         ['id', 'vgs']
         """
         found = self._found
+        single = self.__dict__.get("_single")
+        if single is not None and not found:
+            answer: dict[str, Array] | None = single.read(self.__dict__, names)
+            if answer is not None:
+                return answer
         missing = names
         if found or not _BIAS.isdisjoint(names):
             missing = [name for name in names if name not in found and name not in _BIAS]
         if missing:
             self._check(missing)
-            found.update(self.compute(self, missing))
+            for name, value in self.compute(self, missing).items():
+                found.setdefault(name, value)
         if isinstance(self.count, np.float64) and self.count == 1.0:
             if _BIAS.isdisjoint(names):
                 return {name: found[name] for name in names}
@@ -165,7 +176,7 @@ class OperatingPoint:
 
     def _check(self, names: Sequence[str]) -> None:
         """Refuse quantities that cannot be computed."""
-        if (vars(self).get("_names") or _gather(self.known)).issuperset(names):
+        if _gather(self.known).issuperset(names):
             return
         name = next(name for name in names if name not in self.known)
         raise NoSuchField(f"{self.label} has no quantity {name!r}.", hint=advise(name, self.fields))

@@ -23,6 +23,11 @@ if TYPE_CHECKING:
 Spot = tuple[int, Array, Array, Array]
 """First coefficient of a point, and the weights along vds, gate and vsb."""
 
+Weights = tuple[float, float, float, float]
+
+_PACK = Struct("12d").pack
+_SIXTH = 1.0 / 6.0
+
 
 class PlainAxis:
     """An axis in plain numbers.
@@ -32,28 +37,23 @@ class PlainAxis:
     axis : SplineAxis
         The axis.
 
-    Attributes
-    ----------
-    rows : list
-        For each span and coefficient the weight by four powers of the place.
-
     Examples
     --------
     >>> from gmid.device.spline import natural_axis
-    >>> PlainAxis(natural_axis(np.array([0.0, 1.0]))).find(0.25)
-    (0, 0.25)
+    >>> PlainAxis(natural_axis(np.array([0.0, 1.0]))).weigh(0.25)
+    (0, (0.75, 0.25, 0.0, 0.0))
     """
 
     def __init__(self, axis: SplineAxis) -> None:
         self.breaks: list[float] = axis.breaks.tolist()
         self._last = len(self.breaks) - 1
         self._rates = (1.0 / np.diff(axis.breaks)).tolist()
-        padded = np.zeros((axis.spans, axis.order, 4))
-        padded[..., : axis.order] = axis.basis
-        self.rows: list[list[list[float]]] = padded.tolist()
+        padded = np.zeros((axis.spans, 4, 4))
+        padded[:, : axis.order, : axis.order] = axis.basis
+        self.rows: list[list[float]] = padded.reshape(axis.spans, 16).tolist()
 
-    def find(self, x: float) -> tuple[int, float]:
-        """Find the span that holds a place, and where in it the place lies.
+    def weigh(self, x: float) -> tuple[int, Weights]:
+        """Find the span that holds a place, and weigh its coefficients.
 
         Parameters
         ----------
@@ -64,11 +64,19 @@ class PlainAxis:
         -------
         span : int
             Index of the span.
-        place : float
-            Share of the span that lies before the place, 0 to 1 inside.
+        weights : tuple of float
+            Four of them, those of coefficients that are not there zero.
         """
-        span = bisect_right(self.breaks, x, 1, self._last) - 1
-        return span, (x - self.breaks[span]) * self._rates[span]
+        breaks = self.breaks
+        span = bisect_right(breaks, x, 1, self._last) - 1
+        t = (x - breaks[span]) * self._rates[span]
+        a, b, c, d, e, f, g, h, i, j, k, m, n, o, p, q = self.rows[span]
+        return span, (
+            ((d * t + c) * t + b) * t + a,
+            ((h * t + g) * t + f) * t + e,
+            ((m * t + k) * t + j) * t + i,
+            ((q * t + p) * t + o) * t + n,
+        )
 
 
 class PointReader:
@@ -92,14 +100,14 @@ class PointReader:
 
     def __init__(self, spline: Collapsed) -> None:
         self._bulk, self._drain = PlainAxis(spline.vsb), PlainAxis(spline.vds)
-        self._gate = PlainAxis(spline.gate)
-        rows = np.array(self._bulk.rows)
-        self._threshold = np.einsum("so,sop->sp", spline.threshold[0], rows).tolist()
-        self._offset, (self._low, self._high) = spline.offset, spline.gate.breaks[[0, -1]].tolist()
         _, _, drains, gates, order, count = spline.coefficients.shape
+        threshold = np.zeros((spline.vsb.spans, 4))
+        threshold[:, :order] = spline.threshold[0]
+        self._threshold: list[list[float]] = threshold.tolist()
+        self._offset, (self._low, high) = spline.offset, spline.gate.breaks[[0, -1]].tolist()
+        self._rate, self._spans = spline.gate.spans / (high - self._low), spline.gate.spans
         self._drains, self._gates = drains, gates
-        self._pack = Struct(f"{spline.vds.order + spline.gate.order + order}d").pack
-        self._cuts = (spline.vds.order, spline.vds.order + spline.gate.order)
+        self._orders = (spline.vds.order, 8 + order)
         self._shapes = ((spline.gate.order, order * count), (order, count))
         flat, step = spline.coefficients.reshape(-1), order * count
         width, height = spline.gate.order * step, spline.vds.order
@@ -121,18 +129,25 @@ class PointReader:
         Spot
             Good for all splines of the same device and length.
         """
-        bulk, t = self._bulk.find(math.sqrt(self._offset + vsb))
-        by_bulk = [((d * t + c) * t + b) * t + a for a, b, c, d in self._bulk.rows[bulk]]
+        bulk, by_bulk = self._bulk.weigh(math.sqrt(self._offset + vsb))
+        drain, by_drain = self._drain.weigh(math.log(KNEE + vds))
         a, b, c, d = self._threshold[bulk]
-        at = vgs - (((d * t + c) * t + b) * t + a)
-        gate, t = self._gate.find(min(max(at, self._low), self._high))
-        by_gate = [((d * t + c) * t + b) * t + a for a, b, c, d in self._gate.rows[gate]]
-        drain, t = self._drain.find(math.log(KNEE + vds))
-        by_drain = [((d * t + c) * t + b) * t + a for a, b, c, d in self._drain.rows[drain]]
-        weights = np.frombuffer(self._pack(*by_drain, *by_gate, *by_bulk))
-        one, two = self._cuts
+        w, x, y, z = by_bulk
+        at = (vgs - (a * w + b * x + c * y + d * z) - self._low) * self._rate
+        if 0.0 <= at < self._spans:
+            gate = int(at)
+            t = at - gate
+        else:
+            gate, t = (0, 0.0) if at < 0.0 else (self._spans - 1, 1.0)
+        u, square = 1.0 - t, t * t
+        low, high = u * u * u * _SIXTH, square * t * _SIXTH
+        inner = (0.5 * t - 1.0) * square + 4.0 * _SIXTH
+        weights = np.frombuffer(
+            _PACK(*by_drain, low, inner, 1.0 - low - inner - high, high, w, x, y, z)
+        )
+        drains, bulks = self._orders
         first = (bulk * self._drains + drain) * self._gates + gate
-        return first, weights[:one], weights[one:two], weights[two:]
+        return first, weights[:drains], weights[4:8], weights[8:bulks]
 
     def read(self, spot: Spot) -> Array:
         """Evaluate all quantities.

@@ -15,7 +15,11 @@ ON_CURRENT = frozenset({"gm", "gmb", "noise_flicker"})
 
 
 def restore(
-    raw: Mapping[str, Array], vds: Array, rest: Array | None, thermal_voltage: float
+    raw: Mapping[str, Array],
+    vds: Array,
+    rest: Array | None,
+    thermal_voltage: Array | float,
+    rest_gm: Array | None = None,
 ) -> dict[str, Array]:
     """Turn transformed quantities back into currents, conductances and densities.
 
@@ -27,8 +31,10 @@ def restore(
         Drain-source voltage [V].
     rest : ndarray or None
         Current at vds = 0 [A].
-    thermal_voltage : float
+    thermal_voltage : ndarray or float
         kT/q [V].
+    rest_gm : ndarray, optional
+        Its slope by vgs [S].
 
     Returns
     -------
@@ -54,10 +60,11 @@ def restore(
         else:
             found[name] = values
     if "gm" in raw:
-        ratio = raw["gm"]
+        if rest_gm is not None:
+            found["gm"] = found["gm"] + rest_gm
+        found["gm_over_id"] = raw["gm"]
         if rest is not None:
             total = channel + rest
-            share = np.divide(channel, total, out=np.ones(total.shape), where=total > 0)
-            ratio = ratio * share
-        found["gm_over_id"] = ratio
+            ratio = np.array(np.broadcast_to(raw["gm"], total.shape))
+            found["gm_over_id"] = np.divide(found["gm"], total, out=ratio, where=total > 0)
     return found

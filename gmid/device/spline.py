@@ -7,10 +7,9 @@ value, or its slope, at any place.
 
 from __future__ import annotations
 
-from bisect import bisect_right
 from collections.abc import Sequence
 from dataclasses import dataclass
-from functools import cached_property, lru_cache
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -179,38 +178,6 @@ class SplineAxis:
         if place.size <= _FEW:
             return self.weights(span, place), self.slopes(span, place)
         return self._weigh(span, place, slopes=True)
-
-    def place_one(self, x: float) -> tuple[int, Array]:
-        """Do what `locate` and `weights` do for a single place, in a tenth of the time.
-
-        Parameters
-        ----------
-        x : float
-            Place.
-
-        Returns
-        -------
-        span : int
-            Index of the span.
-        weights : ndarray, shape (order,)
-            Weights [-].
-
-        Examples
-        --------
-        >>> natural_axis(np.array([0.0, 1.0])).place_one(0.25)
-        (0, array([0.75, 0.25]))
-        """
-        breaks = self._breaks
-        span = bisect_right(breaks, x, 1, len(breaks) - 1) - 1
-        share = (x - breaks[span]) / (breaks[span + 1] - breaks[span])
-        powers = [1.0]
-        for _ in range(self.order - 1):
-            powers.append(powers[-1] * share)
-        return span, self.basis[span].dot(powers)
-
-    @cached_property
-    def _breaks(self) -> list[float]:
-        return list(self.breaks.tolist())
 
     def _weigh(self, span: Indices, place: Array, *, slopes: bool) -> tuple[Array, Array]:
         """Run Horner's rule over all places at once, one coefficient after the other."""

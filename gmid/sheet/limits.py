@@ -7,7 +7,7 @@ from collections.abc import Callable, Iterable
 import numpy as np
 
 from gmid.amplifier.checks import spell_condition
-from gmid.amplifier.limits import BY_GAIN, find_swing_limit
+from gmid.amplifier.large import BY_GAIN
 from gmid.amplifier.prediction import Prediction
 from gmid.sheet.data import AmplifierSheet, Limit
 from gmid.sheet.words import spell_value
@@ -37,7 +37,7 @@ def find_output_limit(cases: Iterable[Prediction], margin: float) -> Limit:
     'direct_p'
     """
     value, case, index = _find_least(cases, lambda one: one.output_swing(margin).peak)
-    cause = str(np.broadcast_to(find_swing_limit(case, margin), case.batch)[index])
+    cause = str(np.broadcast_to(case.output_swing(margin).limit, case.batch)[index])
     return Limit(value=max(value, 0.0), condition=_spell(case, index), cause=cause)
 
 

@@ -18,7 +18,8 @@ import numpy as np
 from gmid.errors import DataFault, GmidError
 from gmid.sweep.byte_places import count_bytes, find_bytes
 
-BLOCK = 1 << 20
+BLOCK = 1 << 18
+"""Small enough to stay in the processor's cache while it is hashed and checked."""
 HEAD = 1 << 16
 _END_MARK = b"\x1a"
 """Some writers still end a text with it."""
@@ -151,11 +152,13 @@ class ByteStream:
         Whether lines end in carriage returns alone.
     on_digest : callable
         Called with the checksum at the end of the file.
+    recount : callable
+        Counts the line feeds among so many first bytes of the stream, for messages after `take`.
 
     Attributes
     ----------
     line : int
-        Line feeds handed out so far.
+        Line feeds handed out so far, but for those that `take` gave.
     tail : bytes
         The end of what was handed out, at least the last block.
     fault : GmidError or None
@@ -168,6 +171,7 @@ class ByteStream:
         self, unpacked: Readable, tap: RawTap, *, name: str, encoding: str = "utf-8",
         packed: bool = False, limits: Limits | None = None, carriage: bool = False,
         on_digest: Callable[[str], None] | None = None,
+        recount: Callable[[int], int] | None = None,
     ) -> None:  # fmt: skip
         self._unpacked, self._tap, self._name = unpacked, tap, name
         self._packed, self._limits = packed, limits or Limits()
@@ -175,12 +179,12 @@ class ByteStream:
         self._decoder = None
         if encoding not in ("utf-8", "latin-1", "binary"):
             self._decoder = codecs.getincrementaldecoder(encoding)()
-        self._on_digest = on_digest
-        self._total = self._run = self._seen_lines = self._handed = 0
+        self._on_digest, self._recount = on_digest, recount
+        self._is_counted = True
+        self._total = self._run = self._handed = 0
         self._pending = b""
         self._at = 0
         self._ended = False
-        self._fresh = -1
         self.line = 0
         self.tail = b""
         self.fault: GmidError | None = None
@@ -191,7 +195,7 @@ class ByteStream:
         Parameters
         ----------
         size : int
-            Ignored but for being there: blocks have the size that suits the reader.
+            Ignored: blocks have the size that suits the reader.
 
         Returns
         -------
@@ -203,11 +207,30 @@ class ByteStream:
         DataFault
             If a bound is broken or the file turns out damaged or binary.
         """
+        block = self._hand_out()
+        self.line += count_bytes(block)
+        return block
+
+    def take(self) -> bytes:
+        """Hand out the next block without counting its lines, for who counts them anyway.
+
+        Returns
+        -------
+        bytes
+            Empty at the end of the file.
+
+        Raises
+        ------
+        DataFault
+            As from `read`.
+        """
+        self._is_counted = self._recount is None
+        return self.read() if self._is_counted else self._hand_out()
+
+    def _hand_out(self) -> bytes:
         block = self._pending[self._at :] or self._next_block()
         self._pending, self._at = b"", 0
         if block:
-            self.line += self._fresh if self._fresh >= 0 else count_bytes(block)
-            self._fresh = -1
             self.tail = block if len(block) >= HEAD else (self.tail + block)[-2 * HEAD :]
         return block
 
@@ -223,7 +246,6 @@ class ByteStream:
         while True:
             if self._at >= len(self._pending):
                 self._pending, self._at = self._next_block(), 0
-                self._fresh = -1
             cut = self._pending.find(b"\n", self._at) + 1
             begin, self._at = self._at, cut or len(self._pending)
             parts.append(self._pending[begin : self._at])
@@ -293,8 +315,8 @@ class ByteStream:
             self._check_size()
             block = self._transcode(data, first=first)
             if block:
-                self._handed += len(block)
                 self._check_block(block)
+                self._handed += len(block)
             if block or not data:
                 return block
 
@@ -305,9 +327,8 @@ class ByteStream:
             except UnicodeDecodeError as error:
                 raise DataFault(
                     f"the text is no valid {self._encoding.upper()}: {error.reason}.",
-                    where=f"{self._name}:{self._seen_lines + 1}",
-                    hint="The file is damaged or cut off: copy it again.",
-                ) from error
+                    where=self._where(b""), hint="The file is damaged or cut off: copy it again.",
+                ) from error  # fmt: skip
             data = (text.removeprefix("\ufeff") if first else text).encode()
         elif self._encoding == "latin-1":
             if not data.isascii():
@@ -338,22 +359,25 @@ class ByteStream:
         if self._encoding == "binary":
             return
         if b"\0" in block:
-            line = self._seen_lines + block.count(b"\n", 0, block.index(b"\0")) + 1
             raise DataFault(
                 "a NUL byte stands here: the file is damaged or binary.",
-                where=f"{self._name}:{line}", hint="Write or copy it again.",
+                where=self._where(block[: block.index(b"\0")]), hint="Write or copy it again.",
             )  # fmt: skip
-        self._fresh = count_bytes(block)
         long = self._find_long_line(block)
         if long is not None:
-            line = self._seen_lines + count_bytes(block[:long]) + 1
             raise DataFault(
                 f"the line is longer than {self._limits.line} bytes.",
-                where=f"{self._name}:{line}",
+                where=self._where(block[:long]),
                 hint="This is no table of rows; check what the file holds.",
             )
-        self._run = len(block) - block.rfind(b"\n") - 1 + (0 if self._fresh else self._run)
-        self._seen_lines += self._fresh
+        last = block.rfind(b"\n")
+        self._run = len(block) - last - 1 + (self._run if last < 0 else 0)
+
+    def _where(self, before: bytes) -> str:
+        """Place of the line in a block that stands behind these of its bytes."""
+        known = self._is_counted or self._recount is None
+        lines = self.line if known else self._recount(self._handed)  # type: ignore[misc]
+        return f"{self._name}:{lines + count_bytes(before) + 1}"
 
     def _find_long_line(self, block: bytes) -> int | None:
         """Find where in a block a line is too long, if one is."""

@@ -18,6 +18,7 @@ from pathlib import Path
 from typing import BinaryIO
 
 from gmid.errors import DataFault, FileTrouble
+from gmid.sweep.byte_places import count_bytes
 from gmid.sweep.bytestream import BLOCK, HEAD, ByteStream, Limits, RawTap, Readable
 
 _ARCHIVES = {
@@ -87,7 +88,17 @@ class TextSource:
         return ByteStream(
             unpacked, tap, name=self.name, encoding=self.encoding, packed=self.packed,
             limits=self.limits, carriage=self.carriage, on_digest=self._keep_digest,
+            recount=self._count_lines,
         )  # fmt: skip
+
+    def _count_lines(self, size: int) -> int:
+        """Count line feeds among so many first bytes of the stream."""
+        lines = 0
+        with self.stream() as stream:
+            while size > 0 and (block := stream.take()):
+                lines += count_bytes(block[:size])
+                size -= len(block)
+        return lines
 
     def lines(self, first: int = 1) -> Iterator[tuple[int, str]]:
         """Iterate over the lines with their numbers, decoded, without line ends.

@@ -21,7 +21,7 @@ ROUNDS = 5
 
 
 def write_samples(folder: Path, rows: int) -> None:
-    """Write the same random table in the four layouts, the listing with a tenth of the rows."""
+    """Write the same random table in the five layouts, the listings with a tenth of the rows."""
     import numpy as np
 
     table = np.random.default_rng(1).normal(size=(rows, COLUMNS)) * 1e-6
@@ -39,6 +39,11 @@ def write_samples(folder: Path, rows: int) -> None:
         file.write("Values:\n")
         for index, row in enumerate(table.tolist()):
             file.write(f" {index}\t" + "\n\t".join(f"{v:.15e}" for v in row) + "\n\n")
+    with (folder / "a.lis").open("w") as file:
+        ruler = "-" * 80
+        file.write(f"log of a run\n\n  t\n  dc\n{ruler}\nIndex   {'  '.join(names)}\n{ruler}\n")
+        for index, row in enumerate(table[: rows // 10].tolist()):
+            file.write(f"{index}\t" + "\t".join(f"{v:.9e}" for v in row) + "\t\n")
     with (folder / "a.op").open("w") as file:
         for row in table[: rows // 10].tolist():
             pairs = zip(names, row, strict=True)
@@ -58,6 +63,10 @@ def bare(path: Path) -> int:
         frame = pd.read_csv(path, sep="=", header=None, names=["n", "v"], usecols=["v"],
                             dtype="float64", engine="c")  # fmt: skip
         return len(frame) // COLUMNS
+    if path.suffix == ".lis":
+        return len(
+            pd.read_csv(path, sep=r"\s+", header=None, skiprows=7, dtype="float64", engine="c")
+        )
     separator = "," if path.suffix == ".csv" else r"\s+"
     return len(pd.read_csv(path, sep=separator, dtype="float64", engine="c"))
 
@@ -118,7 +127,7 @@ def main() -> None:
     rows = int(sys.argv[1]) if len(sys.argv) > 1 else 300_000
     with tempfile.TemporaryDirectory() as folder:
         write_samples(Path(folder), rows)
-        for suffix in ("csv", "txt", "raw", "op"):
+        for suffix in ("csv", "txt", "raw", "lis", "op"):
             for mode in ("both", "bare", "ours"):
                 command = [sys.executable, __file__, f"{folder}/a.{suffix}", mode]
                 subprocess.run(command, check=True)

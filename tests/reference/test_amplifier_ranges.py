@@ -13,7 +13,7 @@ import numpy as np
 import pytest
 
 from gmid.amplifier import Prediction, Variant, predict
-from gmid.amplifier.limits import BY_GAIN, find_swing_limit
+from gmid.amplifier.large import BY_GAIN
 from reference.amplifier_cases import CASES, Case, find_devices, make_plan
 from reference.flattened import Flat, flatten, measure_headroom, read_nodes
 
@@ -124,7 +124,7 @@ def test_the_output_swing_by_saturation(made):
 
     nodes = made.at_input(find_end(left, 1e-9, last, 8))
     assert nodes["vdiff"] == pytest.approx(reached, rel=0.03)
-    name = str(find_swing_limit(made.predicted, MARGIN))
+    name = str(made.predicted.output_swing(MARGIN).limit)
     if swing.by_gain < swing.by_saturation:
         assert name == BY_GAIN
     else:

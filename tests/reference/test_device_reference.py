@@ -9,6 +9,7 @@ import cards
 from characterise import DEVICES, GRID, HOME, characterise
 from gmid.condition import Condition
 from gmid.device import Device
+from gmid.sweep.model import Sweep, UnitTransistor
 
 pytestmark = pytest.mark.reference
 
@@ -49,7 +50,11 @@ def ceiling(device, bias):
 
 
 def judge_inverse(device, bias, truth):
-    """Ask for the simulator's own gm/Id; give errors of vgs [mV] and of id [%] and gm/Id."""
+    """Ask for the simulator's own gm/Id wherever vgs lies on the branch that is answered.
+
+    Gives errors of vgs [mV] and of id [%], and gm/Id over its maximum.  Within 0.5 % of the
+    maximum, where gm/Id tells nothing of the current, none is asked.
+    """
     target = truth["gm"] / truth["id"]
     most, place = ceiling(device, bias)
     branch = (bias["vgs"] > place) & (target < 0.995 * most)
@@ -61,17 +66,21 @@ def judge_inverse(device, bias, truth):
     return 1e3 * np.abs(found.vgs - vgs), current, share
 
 
+def simulate_demo(device, condition, **bias):
+    model, polarity, _ = DEVICES[device]
+    models = (HOME / "models" / f"{condition.corner}.inc").read_text(encoding="utf-8")
+    return characterise(models, model, polarity=polarity, temperature=condition.temperature,
+                        **bias)  # fmt: skip
+
+
 @pytest.fixture(scope="module")
 def demo_truth():
     """The same random points of every device and condition of the demo, simulated."""
     found = {}
-    for index, (name, (model, polarity, _)) in enumerate(DEVICES.items()):
+    for index, name in enumerate(DEVICES):
         for condition in CONDITIONS:
-            bias = draw(GRID, 400, seed=index)
-            models = (HOME / "models" / f"{condition.corner}.inc").read_text(encoding="utf-8")
-            truth = characterise(models, model, polarity=polarity,
-                                 temperature=condition.temperature, **bias)  # fmt: skip
-            found[name, condition] = keep(bias, truth)
+            bias = draw(GRID, 600, seed=index)
+            found[name, condition] = keep(bias, simulate_demo(name, condition, **bias))
     return found
 
 
@@ -85,8 +94,10 @@ def test_demo_device(demo_table, demo_truth, name, condition):
         assert np.median(error[quantity]) < 0.02, quantity
         assert np.max(error[quantity]) < 0.6, quantity
     assert np.median(error["gds"]) < 0.1
-    inside = (bias["vgs"] <= 1.8) & (bias["vds"] <= 1.8)
-    assert np.max(error["gds"][inside]) < 2.0
+    # the goal of 2 % is for 27 000 points; here steps of 0.2 V reach over the knee near 2 V
+    assert np.quantile(error["gds"], 0.99) < 2.0
+    assert np.max(error["gds"][bias["vgs"] <= 1.8]) < 2.0
+    assert np.max(error["gds"]) < 3.5
     assert np.median(error["gmb"]) < 0.05
     assert np.median(error["cgg"]) < 0.15
     assert np.median(error["cdd"]) < 0.05
@@ -99,23 +110,49 @@ def test_demo_inverse(demo_table, demo_truth, name, condition):
     bias, truth = demo_truth[name, condition]
     device = demo_table.device(name, corner=condition.corner, temperature=condition.temperature)
     vgs, current, share = judge_inverse(device, bias, truth)
-    usable = (share > 0.1) & (share < 0.7)
-    assert np.mean(vgs[usable] < 0.2) > 0.98  # on some 11 000 points: the goal is for 27 000
-    assert np.max(vgs[usable]) < 0.5
-    assert np.max(current[(share >= 0.7) & (share < 0.95)]) < 0.6
+    # the goals are for 27 000 points; on some 11 000, near 2 V with steps of 0.2 V:
+    assert np.mean(vgs[(share >= 0.1) & (share < 0.7)] < 0.2) > 0.98
+    assert np.max(vgs[(share >= 0.1) & (share < 0.7)]) < 0.4
+    assert np.max(vgs[share < 0.1]) < 2.0
+    assert np.max(current[share < 0.95]) < 0.6
+    assert np.max(current[share < 0.98]) < 1.0
 
 
-DENSE = [("birch250", "nmos", cards.CONDITIONS[1]), ("reed90", "pmos", cards.CONDITIONS[2])]
+LENGTHS = (1.0, 1.1, 1.25, 1.5, 1.95, 2.8, 4.2, 6.8)
+DENSE = {
+    "larch180": ("nmos", CONDITIONS[0]),
+    "birch250": ("nmos", cards.CONDITIONS[1]),
+    "reed90": ("pmos", cards.CONDITIONS[2]),
+}
 
 
-@pytest.fixture(scope="module", params=DENSE, ids=lambda case: f"{case[0]}-{case[1]}-{case[2]}")
+def dense_demo(device, condition):
+    """The demo's device on a grid made as those of the two other processes are."""
+    larch = cards.Process("larch180", 1.8, 2e-6, 1.0, 0.1, {}, GRID)
+    grid = larch.dense_grid()
+    grid["length"] = [*(GRID["length"][0] * ratio for ratio in LENGTHS), GRID["length"][-1]]
+    axes = {name: np.asarray(values, dtype=float) for name, values in grid.items()}
+    mesh = dict(zip(axes, np.meshgrid(*axes.values(), indexing="ij"), strict=True))
+    values = simulate_demo(device, condition, **mesh)
+    return grid, Sweep(device, condition, UnitTransistor(DEVICES[device][1], 2e-6), **axes,
+                       values=values)  # fmt: skip
+
+
+@pytest.fixture(scope="module", params=DENSE)
 def dense(request):
     """A device on some 27 000 points, and random points off them."""
-    name, device, condition = request.param
-    process = cards.PROCESSES[name]
-    sweep = process.sweep(device, condition, dense=True)
-    bias = draw(process.dense_grid(), 1000, seed=7)
-    return Device(sweep), *keep(bias, process.simulate(device, condition, **bias))
+    device, condition = DENSE[request.param]
+    if request.param == "larch180":
+        grid, sweep = dense_demo(device, condition)
+        bias = draw(grid, 2000, seed=7)
+        truth = simulate_demo(device, condition, **bias)
+    else:
+        process = cards.PROCESSES[request.param]
+        sweep = process.sweep(device, condition, dense=True)
+        bias = draw(process.dense_grid(), 2000, seed=7)
+        truth = process.simulate(device, condition, **bias)
+    assert sweep["id"].size < 30_000
+    return Device(sweep), *keep(bias, truth)
 
 
 def test_dense_device(dense):
@@ -130,5 +167,13 @@ def test_dense_device(dense):
 def test_dense_inverse(dense):
     device, bias, truth = dense
     vgs, current, share = judge_inverse(device, bias, truth)
-    assert np.max(vgs[(share > 0.1) & (share < 0.7)]) < 0.2
-    assert np.max(current[(share >= 0.7) & (share < 0.95)]) < 0.6
+    assert np.max(vgs[(share >= 0.1) & (share < 0.7)]) < 0.2
+    # far above threshold gm/Id hardly changes: vgs is met less closely, the current is met
+    deep = share < 0.1
+    assert np.mean(vgs[deep] < 0.2) > 0.98
+    assert np.max(vgs[deep]) < 0.7
+    assert np.max(current[share < 0.98]) < 0.6
+    # the flat top: at 99 % of the maximum, 0.1 % of gm/Id is 10 % of the current
+    top = share >= 0.98
+    assert np.count_nonzero(current[top] >= 0.6) <= 0.1 * np.count_nonzero(top)
+    assert np.max(current[top], initial=0.0) < 3.0

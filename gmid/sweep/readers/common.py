@@ -69,7 +69,7 @@ def read_shape(
     kept, dropped = drop_repeats(made)
     kept = [position for position in kept if position not in shape.void]
     dropped += [
-        f"{made[position].name} (column {position + 1} holds no value)"
+        f"{made[position].name} (column {position + 1} holds no value)".lstrip()
         for position in sorted(shape.void)
     ]
     meta = {

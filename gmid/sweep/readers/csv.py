@@ -1,4 +1,4 @@
-"""Layout ``csv``: columns between commas, semicolons or TABs."""
+"""Layout ``csv``: columns between commas, semicolons, TABs or vertical bars."""
 
 from __future__ import annotations
 
@@ -14,8 +14,8 @@ from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
 LAYOUT = "csv"
-SEPARATORS = (";", "\t", ",")
-"""In the order in which they are tried; with the first two a comma may be decimal."""
+SEPARATORS = (";", "\t", "|", ",")
+"""In the order in which they are tried; with all but the last a comma may be decimal."""
 
 _BLANK_PAIR = re.compile(r"([+-]?[\d.]\S*)\s+([+-]?[\d.]\S*)")
 
@@ -80,8 +80,8 @@ def read(
     found = _find_shape(source.head_lines(), suffixes=suffixes)
     if found is None:
         raise DataFault(
-            "no rows of numbers between commas, semicolons or TABs were found "
-            "in the first 64 kB.", where=source.name,
+            "no rows of numbers between commas, semicolons, TABs or bars were "
+            "found in the first 64 kB.", where=source.name,
             hint="Check the layout, or remove what stands before the table.",
         )  # fmt: skip
     shape = found[0]

@@ -54,7 +54,8 @@ class Gather:
         self.source, self.names, self.faults = source, list(names), faults
         self._suffixes = suffixes
         self._real = [array("d") for _ in names]
-        self._imaginary = [array("d") for _ in names] if is_complex else None
+        self._is_complex = is_complex
+        self._imaginary: list[array[float]] | None = None
         self.lines = array("q")
         if len(self.names) > MOST_COLUMNS:
             raise DataFault(
@@ -85,6 +86,9 @@ class Gather:
             values = []
         if not values or any(value - value != 0 for value in values):
             values = [self._cell(number, j, cell) for j, cell in enumerate(cells)]
+        if self._is_complex and not self._imaginary and any(value.imag for value in values):
+            before = bytes(8 * len(self._real[0]))
+            self._imaginary = [array("d", before) for _ in self.names]
         for position, value in enumerate(values):
             self._real[position].append(value.real)
             if self._imaginary is not None:
@@ -98,14 +102,17 @@ class Gather:
         numbers : iterable of int
             Their lines.
         columns : sequence of ndarray, shape (n_rows,)
-            One for each name; not for complex tables.
+            Real values for each name.
         """
         self.lines.extend(numbers)
         for target, values in zip(self._real, columns, strict=True):
-            target.frombytes(np.ascontiguousarray(values).tobytes())
+            target.frombytes(np.ascontiguousarray(values).view(np.uint8).data)
+        if self._imaginary is not None:
+            for other in self._imaginary:
+                other.frombytes(bytes(8 * (len(self.lines) - len(other))))
 
     def _cell(self, number: int, position: int, cell: str) -> complex:
-        if self._imaginary is None:
+        if not self._is_complex:
             return self._read(number, position, cell)
         real, comma, imaginary = cell.strip("()").partition(",")
         value = complex(self._read(number, position, real))
@@ -126,7 +133,7 @@ class Gather:
         self, layout: str, meta: Mapping[str, str] | None = None, *,
         constants: Sequence[Column] = (), units: Mapping[str, str | None] | None = None,
     ) -> TextTable:  # fmt: skip
-        """Make the table.
+        """Make the table; no row can be added after that.
 
         Parameters
         ----------
@@ -153,11 +160,9 @@ class Gather:
                 columns.append(Column(constant.name, constant.unit, spread))
         for position, head in enumerate(self.names):
             name, unit = (head, units.get(head)) if units is not None else split_head(head)
-            values: Any = np.array(self._real[position])
-            if self._imaginary is not None:
+            values: Any = np.frombuffer(self._real[position]) if size else np.empty(0)
+            if self._imaginary is not None and any(self._imaginary[position]):
                 values = values + 1j * np.array(self._imaginary[position])
-                if not values.imag.any():
-                    values = values.real.copy()
             columns.append(Column(name, unit, values))
         lines = np.array(self.lines, dtype=np.int64)
         return TextTable(

@@ -7,15 +7,20 @@ joined by their Index.
 from __future__ import annotations
 
 import re
+from array import array
+from collections.abc import Sequence
 from dataclasses import dataclass, field
+from functools import partial
 
 import numpy as np
+from numpy.typing import NDArray
 
 from gmid.errors import DataFault
 from gmid.sweep.numbers import is_missing, is_number
 from gmid.sweep.readers.careful import FaultList
 from gmid.sweep.readers.common import drop_repeats
 from gmid.sweep.readers.gather import Gather, check_tables
+from gmid.sweep.readers.segments import read_frame
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import TextTable
 
@@ -91,8 +96,8 @@ def read(source: TextSource, *, suffixes: str = "spice") -> list[TextTable]:
     (['v-sweep', 'id'], [1e-12, 2e-06], 'dc')
     """
     reading = _Reading(source, suffixes)
-    for number, text in source.lines():
-        reading.take(number, text)
+    for number, lines in source.chunks():
+        reading.take_lines(number, lines)
         if reading.faults.is_full:
             break
     return reading.finish()
@@ -104,6 +109,29 @@ def _split(text: str) -> list[str]:
     return re.sub(r"(?<=[\d.A-Za-z])(?<![eEdD\d.][eEdD])-(?=[\d.])", " -", joined).split()
 
 
+def _may_be_row(line: str) -> bool:
+    """Tell whether a line begins with a digit."""
+    return line[:1].isdecimal() or (line[:1].isspace() and line.lstrip()[:1].isdecimal())
+
+
+def _find_end(lines: Sequence[str], place: int, header: str) -> int:
+    """Find the next header that is another one."""
+    for k in range(place, len(lines)):
+        if lines[k] != header and _INDEX.match(lines[k]):
+            return k
+    return len(lines)
+
+
+def _read_rows(lines: Sequence[str], width: int) -> NDArray[np.float64] | None:
+    """Read rows of plain numbers, one a column; None where they are not such."""
+    options = {"sep": r"\s+", "names": list(range(width)), "dtype": "float64"}
+    frame = read_frame(("\n".join(lines).encode(),), **options)
+    if frame is None or len(frame) != len(lines):
+        return None
+    rows: NDArray[np.float64] = frame.to_numpy().T
+    return rows if np.isfinite(rows).all() else None
+
+
 @dataclass
 class _Page:
     """One piece of a table under one header."""
@@ -113,7 +141,7 @@ class _Page:
     title: str
     header_line: int
     indexed: bool
-    index: list[int] = field(default_factory=list)
+    index: array[int] = field(default_factory=partial(array, "q"))
 
 
 class _Reading:
@@ -125,10 +153,55 @@ class _Reading:
         self.groups: list[list[_Page]] = []
         self.page: _Page | None = None
         self.above: list[str] = []
+        self.header = ""
         self.waiting: list[tuple[int, str]] | None = None
         self.last_row = 0
 
+    def take_lines(self, number: int, lines: Sequence[str]) -> None:
+        """Take lines: runs of plain rows at once, all others one by one."""
+        is_row = [*map(_may_be_row, lines), False]
+        rows: NDArray[np.float64] | None = None
+        place = limit = done = 0
+        while place < len(lines) and not self.faults.is_full:
+            page = self.page
+            if not is_row[place] or page is None or not page.indexed or self.waiting is not None:
+                if not is_row[place] and _INDEX.match(lines[place]):
+                    self.header = lines[place]
+                self.take(number + place, lines[place])
+                done += is_row[place]
+                place += 1
+                continue
+            if place >= limit:
+                limit, done = _find_end(lines, place, self.header), 0
+                some = [lines[k] for k in range(place, limit) if is_row[k]]
+                rows = _read_rows(some, len(page.names) + 1)
+            taken = 0
+            if rows is not None and len(rows) == len(page.names) + 1:
+                stop = done + is_row.index(False, place) - place
+                taken = self._take_run(number + place, page, rows[:, done:stop])
+            if not taken:
+                self.take(number + place, lines[place])
+                taken = 1
+            place, done = place + taken, done + taken
+
+    def _take_run(self, number: int, page: _Page, rows: NDArray[np.float64]) -> int:
+        """Take plain rows as far as their Index counts on, and tell how many these are."""
+        first = int(rows[0, 0])
+        if page.index and first != page.index[-1] + 1:
+            return 0
+        fits = rows[0] == first + np.arange(rows.shape[1])
+        count = fits.size if fits.all() else int(fits.argmin())
+        if not count:
+            return 0
+        if not page.index:
+            self._place(number, page, first)
+        page.index.extend(range(first, first + count))
+        page.rows.extend(range(number, number + count), list(rows[1:, :count]))
+        self.last_row = number + count - 1
+        return count
+
     def take(self, number: int, text: str) -> None:
+        """Take one line."""
         text = text.replace("\f", " ").rstrip()
         stripped = text.strip()
         if self.waiting is not None:
@@ -253,7 +326,7 @@ class _Reading:
         self.above.append(text)
 
     def finish(self) -> list[TextTable]:
-        tables = [self._join(group) for group in self.groups]
+        tables = [self._join(group) for group in _merge_parts(self.groups)]
         self.faults.finish()
         return check_tables(self.source, tables)
 
@@ -277,13 +350,36 @@ class _Reading:
                 continue
             columns += other.columns
         kept, dropped = drop_repeats(columns)
-        meta = {"title": first.title, "header": " ".join(first.names),
+        note = "\n".join(
+            f"the part in line {page.header_line} prints no scale; it is joined by its title and "
+            "Index." for page in group[1:] if page.names[0] != first.names[0]
+        )  # fmt: skip
+        meta = {"title": first.title, "note": note, "header": " ".join(first.names),
                 "dropped": ", ".join(dropped)}  # fmt: skip
         return TextTable(
             table.source, [columns[j] for j in kept], first_line=table.first_line,
             lines=table.lines, meta={key: text for key, text in meta.items() if text},
             layout=LAYOUT,
         )  # fmt: skip
+
+
+def _merge_parts(groups: Sequence[list[_Page]]) -> list[list[_Page]]:
+    """Put later parts of a table that lack its scale to the first: same title, same Index."""
+    merged: list[list[_Page]] = []
+    for group in groups:
+        last = merged[-1] if merged else []
+        known = {name for page in last for name in page.names}
+        if (
+            last
+            and all(page.indexed for page in (*last, *group))
+            and not any(name in known for page in group for name in page.names)
+            and last[0].title.split("\n")[-2:] == group[0].title.split("\n")[-2:] != [""]
+            and all(page.index == last[0].index for page in group)
+        ):
+            last.extend(group)
+        else:
+            merged.append(list(group))
+    return merged
 
 
 def _name_pairs(lines: list[str], count: int) -> list[str]:

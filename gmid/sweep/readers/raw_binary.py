@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 
 from gmid.errors import DataFault
 from gmid.sweep.bytestream import ByteStream
-from gmid.sweep.readers.raw_body import Body
 from gmid.sweep.readers.raw_header import Plot
+from gmid.sweep.readers.raw_tokens import Body
 from gmid.sweep.source import TextSource
 
 

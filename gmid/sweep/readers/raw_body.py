@@ -1,55 +1,33 @@
-"""Values of SPICE3 raw plots: with the C reader where the lines are regular, else by tokens."""
+"""Values of SPICE3 raw plots: with the C reader where the lines are regular."""
 
 from __future__ import annotations
 
-from array import array
+import re
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from functools import partial
-from itertools import takewhile
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.errors import DataFault
-from gmid.sweep.byte_places import count_bytes, find_bytes
 from gmid.sweep.bytestream import ByteStream
-from gmid.sweep.numbers import is_missing, parse_number
-from gmid.sweep.readers.careful import FaultList
 from gmid.sweep.readers.raw_header import Plot
+from gmid.sweep.readers.raw_tokens import Body, read_tokens
 from gmid.sweep.readers.rows import has_cut_number
-from gmid.sweep.readers.segments import ColumnStore, cut_segments, parse_in_order, read_frame
+from gmid.sweep.readers.segments import (
+    ColumnStore,
+    Segment,
+    cut_segments,
+    has_lone_return,
+    parse_in_order,
+    read_frame,
+)
 from gmid.sweep.source import TextSource, decode_line
 
 _FEW = 1000
-_SEGMENT = 1 << 19
 _MARK = b"\nTitle:"
-_TAB, _LF, _CR = 9, 10, 13
-
-
-@dataclass(frozen=True, eq=False)
-class Body:
-    """The values of a plot.
-
-    Parameters
-    ----------
-    columns : list of ndarray, shape (n_points,)
-        float64 or complex128, one a variable.
-    lines : ndarray of int, shape (n_points,)
-        Line on which each point begins.
-    notes : list of str
-        What is worth telling.
-    """
-
-    columns: list[NDArray[Any]]
-    lines: NDArray[np.int64]
-    notes: list[str] = field(default_factory=list)
-
-    @property
-    def points(self) -> int:
-        """Number of points."""
-        return int(self.lines.size)
+_BEGIN = re.compile(rb"^[^\t\r\n][^\n]*", re.MULTILINE)
 
 
 class _Feed:
@@ -65,7 +43,7 @@ class _Feed:
     def read(self) -> bytes:
         """Hand out the next bytes: whole lines where the next plot may be near."""
         while not self._ended:
-            block = self._stream.read()
+            block = self._stream.take()
             if block and not self._carry and b"T" not in block:
                 self.tail = block if len(block) > 4096 else (self.tail + block)[-8192:]
                 self._on_line = block.endswith(b"\n")
@@ -96,67 +74,86 @@ class _Piece:
     """The values of one segment: whole points, and what stands before and after them.
 
     `before` is the end of a point begun in an earlier segment, `after` the start of one that a
-    later segment ends; `starts` are the lines on which points begin, counted in the segment.
+    later segment ends; `starts` are the lines on which points begin, counted in the segment;
+    `first` is the number written before the first of them.
     """
 
     before: NDArray[Any]
     points: NDArray[Any]
     after: NDArray[Any]
     starts: NDArray[np.int64]
+    first: float
     line_count: int
     size: int
 
 
-def _find_entries(first: NDArray[np.uint8]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
-    """Find the lines with values, and which of these begin a point, by their first bytes."""
-    opening = (first != _LF) & (first != _CR) & (first != _TAB)
-    points = np.flatnonzero(opening[:_FEW])
-    step = int(points[1] - points[0]) if points.size > 1 else 0
-    if not step or not np.array_equal(first[step:], first[:-step]):
-        filled = np.flatnonzero((first != _LF) & (first != _CR))
-        return filled, np.flatnonzero(first[filled] != _TAB)
-    once, each = _find_entries(first[:step])
-    turns = -(-first.size // step)
-    filled = (np.arange(turns)[:, None] * step + once).ravel()
-    orders = (np.arange(turns)[:, None] * once.size + each).ravel()
-    filled = filled[: np.searchsorted(filled, first.size)]
-    return filled, orders[: np.searchsorted(orders, filled.size)]
+def _parse(segment: Segment, *, count: int, is_complex: bool) -> _Piece | None:
+    """Read one segment; None when its lines are not regular.
 
-
-def _parse(text: bytes, *, count: int, is_complex: bool) -> _Piece | None:
-    """Read one segment; None when its lines are not regular."""
-    size = len(text)
-    letters = np.frombuffer(text, dtype=np.uint8)
-    ends = find_bytes(text, _LF)
-    first = letters[np.concatenate(([0], ends[: -1 if text.endswith(b"\n") else None] + 1))]
-    filled, orders = _find_entries(first)
-    kind = np.complex128 if is_complex else np.float64
-    if not filled.size:
-        empty = np.empty(0, kind)
-        return _Piece(empty, np.empty((count, 0), kind), empty, orders, ends.size, size)
-    parts = 2 if is_complex else 1
-    tabs = count_bytes(text, _TAB)
-    if tabs == filled.size + orders.size:
-        text = text.replace(b"\t\t", b"\t")
-    elif tabs != filled.size:
+    Each line is read as a row of two fields, the number of a point and a value; either may be
+    void, both are on a blank line.
+    """
+    size = sum(map(len, segment))
+    begin = _BEGIN.search(segment[0])
+    is_doubled = begin is not None and b"\t\t" in begin[0]
+    if is_doubled:
+        segment = (b"".join(segment).replace(b"\t\t", b"\t"),)
+    replaced = size - sum(map(len, segment))
+    if is_complex:
+        segment = tuple(block.replace(b",", b"\t") for block in segment)
+    names = ["point", "real", "imaginary"][: 2 + is_complex]
+    frame = read_frame(
+        segment, sep="\t", names=names, dtype="float64", na_filter=True, keep_default_na=False,
+        na_values=[""],
+    )  # fmt: skip
+    if frame is None or has_lone_return(segment):
+        return None
+    number, flat = frame["point"].to_numpy(), frame["real"].to_numpy()
+    filled = np.isfinite(flat)
+    if np.count_nonzero(np.isnan(flat)) != flat.size - np.count_nonzero(filled):
         return None
     if is_complex:
-        text = text.replace(b",", b"\t")
-    names = ["point", "real", "imaginary"][: parts + 1]
-    frame = read_frame(text, sep="\t", names=names, usecols=names[1:], dtype="float64", quoting=3)
-    if frame is None or len(frame) != filled.size:
+        imaginary = frame["imaginary"].to_numpy()
+        if not np.array_equal(np.isfinite(imaginary), filled):
+            return None
+        flat = flat + 1j * imaginary
+    begins = ~np.isnan(number)
+    starts = np.flatnonzero(begins)
+    if (is_doubled and replaced != starts.size) or (begins & ~filled).any():
         return None
-    flat = frame["real"].to_numpy()
-    if is_complex:
-        flat = flat + 1j * frame["imaginary"].to_numpy()
-    if not np.isfinite(flat).all():
+    first = number[starts[0]] if starts.size else np.nan
+    if not np.array_equal(number[starts], first + np.arange(starts.size)):
         return None
-    first_point = int(orders[0]) if orders.size else flat.size
-    if not np.array_equal(orders, np.arange(first_point, flat.size, count)):
+    split = _split_points(flat, filled, starts, count)
+    lines = flat.size - (not segment[-1].endswith(b"\n"))
+    return None if split is None else _Piece(*split, starts, float(first), lines, size)
+
+
+def _split_points(
+    flat: NDArray[Any], filled: NDArray[np.bool_], starts: NDArray[np.int64], count: int
+) -> tuple[NDArray[Any], NDArray[Any], NDArray[Any]] | None:
+    """Give what stands before the whole points, these, and what stands after; None if irregular.
+
+    `flat` are the values of the lines, `filled` tells which have one, `starts` which begin a point.
+    """
+    if not starts.size:
+        return flat[filled], np.empty((count, 0), flat.dtype), flat[:0]
+    steps = np.diff(starts)
+    step = int(steps[0]) if steps.size and (steps == steps[0]).all() else 0
+    whole = slice(int(starts[0]), int(starts[-1]))
+    if step >= count:
+        taken = filled[whole].reshape(-1, step)
+        if taken[:, :count].all() and not taken[:, count:].any():
+            points = flat[whole].reshape(-1, step)[:, :count]
+            last = flat[whole.stop :][filled[whole.stop :]]
+            return flat[: whole.start][filled[: whole.start]], points.T, last
+    numbers = flat[filled]
+    orders = np.cumsum(filled)[starts] - 1
+    head = int(orders[0])
+    if not np.array_equal(orders, np.arange(head, numbers.size, count)):
         return None
-    end = first_point + (flat.size - first_point) // count * count
-    points = np.ascontiguousarray(flat[first_point:end].reshape(-1, count).T)
-    return _Piece(flat[:first_point], points, flat[end:], filled[orders], ends.size, size)
+    end = int(orders[-1])
+    return numbers[:head], numbers[head:end].reshape(-1, count).T, numbers[end:]
 
 
 def read_body(source: TextSource, stream: ByteStream, plot: Plot, *, suffixes: str) -> Body:
@@ -197,15 +194,9 @@ def read_body(source: TextSource, stream: ByteStream, plot: Plot, *, suffixes: s
     [array([0.5])]
     """
     if plot.is_unpadded or 0 < (plot.announced or 0) * len(plot.variables) <= _FEW:
-        body = _Tokens(source, plot, suffixes).run(_take_lines(stream))
+        body = read_tokens(source, plot, _take_lines(stream), suffixes=suffixes)
     else:
-        fast = _read_fast(stream, plot)
-        if fast is None:
-            for _ in _take_lines(stream):
-                pass
-            lines = source.lines(plot.values_line + 1)
-            fast = _Tokens(source, plot, suffixes).run(_until_mark(lines))
-        body = fast
+        body = _read_fast(stream, plot) or _read_again(source, stream, plot, suffixes)
     plot.found_points = body.points
     return body
 
@@ -219,150 +210,55 @@ def _take_lines(stream: ByteStream) -> Iterator[tuple[int, str]]:
         yield stream.line + (not line.endswith(b"\n")), decode_line(line.rstrip(b"\n"))
 
 
-def _until_mark(lines: Iterator[tuple[int, str]]) -> Iterator[tuple[int, str]]:
-    mark = _MARK[1:].decode()
-    return takewhile(lambda line: not line[1].startswith(mark), lines)
+def _read_again(source: TextSource, stream: ByteStream, plot: Plot, suffixes: str) -> Body:
+    """Read token by token what the C reader did not like."""
+    for _ in _take_lines(stream):
+        pass
+    last = plot.values_line
+
+    def lines() -> Iterator[tuple[int, str]]:
+        nonlocal last
+        for number, text in source.lines(last + 1):
+            if text.startswith(_MARK[1:].decode()):
+                return
+            last = number
+            yield number, text
+
+    body = read_tokens(source, plot, lines(), suffixes=suffixes)
+    stream.line = last
+    return body
 
 
 def _read_fast(stream: ByteStream, plot: Plot) -> Body | None:
     """Read regular values with the C reader; None when they are not."""
     feed, count, line = _Feed(stream), len(plot.variables), stream.line + 1
     store, starts = ColumnStore(), ColumnStore()
-    open_point = np.empty(0)
+    kind = np.complex128 if plot.is_complex else np.float64
+    begun: NDArray[Any] = np.empty(0, kind)
     parse = partial(_parse, count=count, is_complex=plot.is_complex)
-    for piece in parse_in_order(cut_segments(feed.read, size=_SEGMENT), parse):
-        if piece is None or not _continues(piece, open_point.size, count):
+    for piece in parse_in_order(cut_segments(feed.read), parse):
+        if piece is None or not _continues(piece, begun.size, starts.rows, count):
             feed.give_back()
             return None
         share = piece.size / stream.expected
-        if piece.before.size:
-            open_point = np.concatenate((open_point, piece.before))
-        if open_point.size == count:
-            store.append(open_point[:, None], share=share / max(piece.points.shape[1], 1))
-            open_point = open_point[:0]
-        store.append(piece.points, share=share)
-        starts.append(piece.starts[None] + line, share=share)
-        open_point = piece.after if piece.after.size else open_point
+        begun = np.concatenate((begun, piece.before))
+        if piece.starts.size:
+            if begun.size:
+                store.append(begun[:, None], share=share / max(piece.points.shape[1], 1))
+            store.append(piece.points, share=share)
+            starts.append(piece.starts[None] + line, share=share)
+            begun = piece.after
         line += piece.line_count
-    if not store.rows or open_point.size or has_cut_number(feed.tail, "\t"):
+    if begun.size != count or has_cut_number(feed.tail, "\t"):
         return None
+    store.append(begun[:, None], share=1.0)
+    stream.line = line - feed.tail.endswith(b"\n")
     return Body(store.finish(), starts.finish()[0])
 
 
-def _continues(piece: _Piece, begun: int, count: int) -> bool:
-    """Tell whether a segment goes on with the point that the one before began."""
-    wanted = count - begun if begun else 0
-    if piece.starts.size:
-        return piece.before.size == wanted
-    return piece.before.size <= wanted
-
-
-class _Tokens:
-    """The slow reading of one plot, token by token."""
-
-    def __init__(self, source: TextSource, plot: Plot, suffixes: str) -> None:
-        self._source, self._plot, self._suffixes = source, plot, suffixes
-        self._values: list[array[float]] = [array("d") for _ in plot.variables]
-        self._imaginary: list[array[float]] = [array("d") for _ in plot.variables]
-        self._lines = array("q")
-        self._faults = FaultList(source)
-        self._expected: list[int] = []
-        self._next = 0
-        self._last_line = plot.values_line
-
-    def run(self, lines: Iterator[tuple[int, str]]) -> Body:
-        """Read the lines of the plot."""
-        tail: list[str] = []
-        for number, text in lines:
-            if self._faults.is_full:
-                break
-            if text.strip():
-                tail = [*tail[-29:], text]
-                self._last_line = number
-                self._read_line(number, text)
-        if self._expected:
-            name = self._plot.variables[self._expected[0]].name
-            self._faults.add(
-                self._last_line, f"the last point is incomplete: {len(self._expected)} of its "
-                f"{len(self._plot.variables)} values are missing, from {name!r} on.",
-                "The file is cut off: copy or write it again.",
-            )  # fmt: skip
-        elif not self._faults.any and self._is_cut(tail):
-            self._faults.add(self._last_line, f"the file ends inside a number: {tail[-1]!r}.",
-                             "It is cut off: copy or write it again.")  # fmt: skip
-        self._faults.finish()
-        return Body(self._columns(), np.array(self._lines, dtype=np.int64))
-
-    def _read_line(self, number: int, text: str) -> None:
-        words = text.replace(", ", ",").split()
-        if not self._expected and text.startswith("\t"):
-            self._too_many(number, words[0])
-            return
-        if not self._expected or (text[:1] != "\t" and len(words) > 1 and words[0].isdigit()):
-            self._begin_point(number, words.pop(0))
-        for word in words:
-            if not self._expected:
-                self._too_many(number, word)
-                return
-            self._read_word(number, self._expected.pop(0), word)
-
-    def _too_many(self, number: int, word: str) -> None:
-        self._faults.add(
-            number, f"expected the number of the next point, found {word!r}: point "
-            f"{self._next - 1} has too many values.", "The file is damaged: write it again.",
-        )  # fmt: skip
-
-    def _begin_point(self, number: int, word: str) -> None:
-        """Check the index of a point and list the variables that it holds."""
-        if self._expected:
-            name = self._plot.variables[self._expected[0]].name
-            self._faults.add(
-                number, f"a new point begins while point {self._next - 1} still lacks "
-                f"{name!r}.", "The file is damaged: write it again.",
-            )  # fmt: skip
-        index = self._next
-        if word != str(index):
-            self._faults.add(
-                number, f"expected point {index}, found {word!r}.",
-                "Points are missing or doubled: write the file again.",
-            )  # fmt: skip
-        self._next = int(word) + 1 if word.isdigit() and len(word) < 10 else index + 1
-        self._lines.append(number)
-        self._expected = [
-            position for position, variable in enumerate(self._plot.variables)
-            if not self._plot.is_unpadded or variable.size is None or index < variable.size
-        ]  # fmt: skip
-
-    def _read_word(self, number: int, position: int, word: str) -> None:
-        parts = word.strip("()").split(",") if self._plot.is_complex else [word]
-        name = self._plot.variables[position].name
-        if len(parts) != (2 if self._plot.is_complex else 1):
-            self._faults.add(number, f"expected 're,im' for {name!r}, found {word!r}.",
-                             "The file is damaged: write it again.")  # fmt: skip
-            return
-        for target, part in zip((self._values, self._imaginary), parts, strict=False):
-            try:
-                target[position].append(parse_number(part, suffixes=self._suffixes))
-            except DataFault:
-                what = "the value is missing" if is_missing(part) else "expected a number"
-                self._faults.add(number, f"{what} for {name!r}: found {part!r}.",
-                                 "Simulate this point again.")  # fmt: skip
-
-    def _is_cut(self, tail: list[str]) -> bool:
-        """Tell whether the file ends inside a number of this plot."""
-        if not has_cut_number("\n".join(tail).encode(), None):
-            return False
-        with self._source.stream() as stream:
-            while stream.read():
-                pass
-            return decode_line(stream.tail.rsplit(b"\n", 1)[-1]) == tail[-1]
-
-    def _columns(self) -> list[NDArray[Any]]:
-        """Columns of full length; constants keep their one value for all points."""
-        columns: list[NDArray[Any]] = []
-        for real, imaginary in zip(self._values, self._imaginary, strict=True):
-            values: NDArray[Any] = np.array(real)
-            if self._plot.is_complex:
-                values = values + 1j * np.array(imaginary)
-            columns.append(values)
-        return columns
+def _continues(piece: _Piece, begun: int, points: int, count: int) -> bool:
+    """Tell whether a segment goes on with the point that the one before began, and counts on."""
+    if not piece.starts.size:
+        return begun + piece.before.size <= count * bool(begun)
+    whole = begun + piece.before.size == (count if begun else 0)
+    return whole and piece.first == points and piece.after.size <= count

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 from gmid.errors import DataFault
 from gmid.sweep.bytestream import ByteStream
+from gmid.sweep.numbers import is_number
 from gmid.sweep.source import TextSource, decode_line
 
 _KEY = re.compile(r"\s*(?P<key>[A-Za-z][A-Za-z. _]*?)\s*:(?P<value>.*)", re.DOTALL)
@@ -15,6 +16,9 @@ _UNITS = {
     "voltage": "V", "current": "A", "admittance": "S", "conductance": "S", "capacitance": "F",
     "impedance": "ohm", "resistance": "ohm", "frequency": "Hz", "time": "s", "charge": None,
     "notype": None,
+}  # fmt: skip
+_HEADER = {
+    "plotname", "flags", "no. variables", "no. points", "variables", "values", "binary",
 }  # fmt: skip
 _META = {"title": "title", "plotname": "plot"}
 
@@ -63,6 +67,8 @@ class Plot:
         Set when the values have been read.
     is_binary : bool
         Whether the values are no text.
+    skipped : int
+        Lines of a log before the header.
     """
 
     number: int
@@ -75,6 +81,7 @@ class Plot:
     values_line: int
     found_points: int = 0
     is_binary: bool = False
+    skipped: int = 0
 
 
 def read_header(source: TextSource, stream: ByteStream, number: int) -> Plot | None:
@@ -113,6 +120,7 @@ def read_header(source: TextSource, stream: ByteStream, number: int) -> Plot | N
     keys: dict[str, tuple[str, int]] = {}
     variables: list[Variable] = []
     in_variables = False
+    skipped = _skip_log(source, stream) if number == 1 else 0
     while raw := stream.readline():
         text = decode_line(raw.rstrip(b"\n"))
         if not text.strip():
@@ -130,7 +138,7 @@ def read_header(source: TextSource, stream: ByteStream, number: int) -> Plot | N
             key = match["key"].lower()
             if key in ("values", "binary"):
                 plot = _make_plot(source, keys, variables, number, stream.line)
-                plot.is_binary = key == "binary"
+                plot.is_binary, plot.skipped = key == "binary", skipped
                 return plot
             in_variables = key == "variables"
             first = _read_variable(match["value"], stream.line) if in_variables else None
@@ -143,6 +151,28 @@ def read_header(source: TextSource, stream: ByteStream, number: int) -> Plot | N
             where=source.where(stream.line), hint="Did the simulation run to its end?",
         )  # fmt: skip
     return None
+
+
+def _skip_log(source: TextSource, stream: ByteStream) -> int:
+    """Skip lines of a log before the first title, and count them.
+
+    Where numbers or lines of a header stand among them the file is damaged: nothing is skipped.
+    """
+    before: list[str] = []
+    for text in source.head_lines():
+        if text.lower().startswith("title:"):
+            break
+        before.append(text)
+    else:
+        return 0
+    keys = [_KEY.match(text) for text in before if text.strip()]
+    if all(keys) or any(key["key"].lower() in _HEADER for key in keys if key):
+        return 0
+    if any(is_number(text.split()[0]) for text in before if text.strip()):
+        return 0
+    for _ in before:
+        stream.readline()
+    return sum(map(bool, map(str.strip, before)))
 
 
 def _read_variable(text: str, line: int) -> Variable | None:

@@ -15,10 +15,17 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.sweep.bytestream import ByteStream
+from gmid.sweep.byte_places import count_bytes
 from gmid.sweep.numbers import is_missing
 from gmid.sweep.readers.scan import Shape
-from gmid.sweep.readers.segments import ColumnStore, cut_segments, parse_in_order, read_frame
+from gmid.sweep.readers.segments import (
+    ColumnStore,
+    Segment,
+    cut_segments,
+    has_lone_return,
+    parse_in_order,
+    read_frame,
+)
 from gmid.sweep.source import TextSource
 
 _FORTRAN = bytes.maketrans(b"dD", b"eE")
@@ -81,36 +88,35 @@ def read_rows_fast(source: TextSource, shape: Shape) -> Rows | None:
     store = ColumnStore()
     words: list[list[NDArray[np.str_]]] = [[] for _ in shape.text]
     parse = partial(_parse, shape=shape, options=_options(shape))
+    in_step, blank_end = True, False
     with source.stream() as stream:
         while stream.line < shape.first_line - 1:
             if not stream.readline():
                 return None
-        for piece in parse_in_order(cut_segments(stream.read), parse):
+        for piece in parse_in_order(cut_segments(stream.take), parse):
             if piece is None:
                 return None
+            in_step &= piece.in_step and not (blank_end and piece.numbers.shape[1])
+            blank_end |= piece.blank_end
             store.append(piece.numbers, share=piece.size / stream.expected)
             for column, found in zip(words, piece.words, strict=True):
                 column.append(found)
         count = store.rows
         if count == 0 or has_cut_number(stream.tail, shape.separator):
             return None
-        uniform = _count_lines(stream) - (shape.first_line - 1) == count
     lines = None
-    if not uniform:
+    if not in_step:
         occupied = [number for number, text in source.lines(shape.first_line) if text.strip()]
         if len(occupied) != count:
             return None
         lines = np.array(occupied, dtype=np.int64)
     first = shape.first_line if lines is None else int(lines[0])
-    numbers = store.finish()
-    if not all(np.isfinite(column).all() for column in numbers):
-        return None
     values: dict[int, NDArray[Any]] = {
         place: np.concatenate(column)
         for place, column in zip(sorted(shape.text), words, strict=True)
     }
     values |= {place: np.broadcast_to(np.nan, count) for place in shape.void}
-    plain = iter(numbers)
+    plain = iter(store.finish())
     return Rows(
         [values[j] if j in values else next(plain) for j in range(shape.width)], first, lines
     )
@@ -168,36 +174,45 @@ def _options(shape: Shape) -> dict[str, Any]:
     return {
         "sep": r"\s+" if shape.separator is None else shape.separator,
         "names": list(range(shape.fields)),
-        "index_col": False,
         "dtype": kinds,
-        "quoting": 3 if shape.separator is None else 0,
     }
 
 
 @dataclass(frozen=True, eq=False)
 class _Piece:
-    """Rows of one segment: the columns of numbers, those of words, and its size in bytes."""
+    """Rows of one segment: the columns of numbers, those of words, and its size in bytes.
+
+    `blank_end` tells that nothing but blank lines stands behind the last row, `in_step` that each
+    line before is one row.
+    """
 
     numbers: NDArray[np.float64]
     words: list[NDArray[np.str_]]
     size: int
+    in_step: bool = True
+    blank_end: bool = False
 
 
-def _parse(text: bytes, *, shape: Shape, options: dict[str, Any]) -> _Piece | None:
+def _parse(segment: Segment, *, shape: Shape, options: dict[str, Any]) -> _Piece | None:
     """Read one segment; None when a row or value is not plain."""
-    size = len(text)
+    size = sum(map(len, segment))
     if shape.decimal_comma:
-        if b"." in text:
+        if any(b"." in block for block in segment):
             return None
-        text = text.replace(b",", b".")
+        segment = tuple(block.replace(b",", b".") for block in segment)
     if shape.fortran:
-        text = text.translate(_FORTRAN)
-    if text.isspace():
+        segment = tuple(block.translate(_FORTRAN) for block in segment)
+    if all(map(bytes.isspace, segment)):
         empty = np.empty((shape.width - len(shape.text | shape.void), 0))
-        return _Piece(empty, [np.empty(0, str)] * len(shape.text), size)
-    if b'"' not in text:
-        options = {**options, "quoting": 3}
-    frame = read_frame(text, **options)
+        return _Piece(empty, [np.empty(0, str)] * len(shape.text), size, blank_end=True)
+    may_quote = shape.separator is not None
+    is_quoted = (
+        may_quote and bool(shape.text | shape.void) and any(b'"' in block for block in segment)
+    )
+    frame = None if is_quoted else read_frame(segment, **options)
+    in_step, blank_end = not has_lone_return(segment), False
+    if frame is None:
+        frame, in_step, blank_end = _read_lines(b"".join(segment), options, may_quote=may_quote)
     if frame is None:
         return None
     words = []
@@ -212,13 +227,24 @@ def _parse(text: bytes, *, shape: Shape, options: dict[str, Any]) -> _Piece | No
         if not all(map(is_missing, map(str, frame[j].cat.categories))):
             return None
     other = shape.text | shape.void
-    plain = [frame[j].to_numpy() for j in range(shape.width) if j not in other]
-    return _Piece(np.array(plain), words, size) if plain else None
+    plain = [j for j in range(shape.width) if j not in other]
+    if not plain:
+        return None
+    numbers = (frame if len(plain) == shape.fields else frame[plain]).to_numpy().T
+    return _Piece(numbers, words, size, in_step, blank_end) if np.isfinite(numbers).all() else None
 
 
-def _count_lines(stream: ByteStream) -> int:
-    """Lines of the whole file, those left blank at its end not counted."""
-    tail = stream.tail
-    body = tail.rstrip()
-    blank = tail.count(b"\n", len(body))
-    return stream.line - blank + (1 if body else 0)
+def _read_lines(text: bytes, options: dict[str, Any], *, may_quote: bool) -> tuple[Any, bool, bool]:
+    """Read rows among which are quotes or blank lines.
+
+    Tells besides whether each line is a row, and whether blank lines end the text.
+    """
+    rows = text[: text.find(b"\n", len(text.rstrip())) + 1] or text
+    blank_end = len(rows) < len(text)
+    if may_quote and b'"' in rows:
+        options = {**options, "quoting": 0}
+    frame = read_frame((rows,), **options)
+    if frame is None:
+        return read_frame((rows,), skip_blank_lines=True, **options), False, blank_end
+    in_step = len(frame) == count_bytes(rows) + (not rows.endswith(b"\n"))
+    return frame, in_step, blank_end

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import csv
 import re
 from collections import Counter
 from collections.abc import Sequence
@@ -16,7 +17,10 @@ from gmid.sweep.source import TextSource
 _SAMPLE = 60
 _COMMA_NUMBER = re.compile(r"[+-]?\d*,\d+(?:[eEdD][+-]?\d+)?\w*")
 _FORTRAN = re.compile(r"[+-]?(?:\d+[.,]?\d*|[.,]\d+)[dD][+-]?\d+")
-_RULER = re.compile(r"[-=_+|]{2,}|[-=_+|]{3,}(?:\s+[-=_+|]{3,})*")
+_RULER = re.compile(
+    r"[-=_+|]{2,}|[-=_+|]{3,}(?:\s+[-=_+|]{3,})*|[|+]?(?:\s*:?[-=]{2,}:?\s*[|+])+(?:\s*:?[-=]{2,}:?)?"
+)
+_QUOTED = re.compile(r"'([^']+)'")
 
 
 class HeaderMissing(DataFault):
@@ -199,7 +203,7 @@ def settle_header(
             hint="List their names in the recipe: columns = [...], from left to right.",
             width=shape.width,
         )  # fmt: skip
-    cells = list(header.cells)
+    cells = _leave_quotes(source, header, shape)
     if shape.separator is None:
         cells = join_units(cells, shape.width)
     elif len(cells) == shape.width + 1 and not cells[-1]:
@@ -211,12 +215,30 @@ def settle_header(
             hint=_mismatch_hint(shape, len(cells), header.number),
         )  # fmt: skip
     for position, cell in enumerate(cells):
-        if not cell:
+        if not cell and position not in shape.void:
             raise DataFault(
                 f"column {position + 1} has no name in the header.",
                 where=source.where(header.number), hint="Name it, or list columns = [...].",
             )  # fmt: skip
     return cells, shape
+
+
+def _leave_quotes(source: TextSource, header: Line, shape: Shape) -> list[str]:
+    """Give the cells of a header without single quotes around them; separators may be inside."""
+    text = source.head_lines()[header.number - 1]
+    if shape.separator is not None and len(header.cells) > shape.width and "'" in text:
+        body = text.lstrip().lstrip("#*!;%") if header.commented else text
+        whole = [cell.strip() for cell in next(csv.reader(
+            [body.replace("\r", " ")], delimiter=shape.separator, quotechar="'",
+            skipinitialspace=True,
+        ))]  # fmt: skip
+        if len(whole) == shape.width:
+            return whole
+    matches = [_QUOTED.fullmatch(cell) for cell in header.cells]
+    return [
+        cell if match is None else match[1].strip()
+        for cell, match in zip(header.cells, matches, strict=True)
+    ]
 
 
 def name_columns(heads: Sequence[str], units: Sequence[str] | None) -> list[tuple[str, str | None]]:

@@ -13,8 +13,9 @@ from gmid.errors import DataFault
 from gmid.sweep.bytestream import ByteStream
 from gmid.sweep.readers.common import drop_repeats
 from gmid.sweep.readers.raw_binary import read_binary
-from gmid.sweep.readers.raw_body import Body, read_body
+from gmid.sweep.readers.raw_body import read_body
 from gmid.sweep.readers.raw_header import Plot, Variable, read_header
+from gmid.sweep.readers.raw_tokens import Body
 from gmid.sweep.source import TextSource
 from gmid.sweep.texttable import Column, TextTable
 
@@ -128,6 +129,8 @@ def _make_table(source: TextSource, plot: Plot, body: Body) -> TextTable:
     notes = list(body.notes)
     if not plot.announced:
         notes.append(f"the header announces no points; {body.points} were found and taken.")
+    if plot.skipped:
+        notes.append(f"{plot.skipped} lines of a log before the header were left out.")
     if notes:
         meta["note"] = "\n".join(notes)
     steps = np.diff(body.lines)

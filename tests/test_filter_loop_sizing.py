@@ -16,8 +16,8 @@ from gmid.amplifier.filtering.grouping import (
     make_plans,
     share_loads,
 )
-from gmid.amplifier.filtering.loop import ROUNDS
 from gmid.amplifier.filtering.reviewing import review_filter
+from gmid.amplifier.filtering.rounds import ROUNDS
 from gmid.amplifier.filtering.sizing import FilterSizing, size_filter
 from gmid.amplifier.plan import AmplifierPlan, Choices, Requirement
 from gmid.filters import FilterSpec, Passives, Tolerance

@@ -9,17 +9,20 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import ArrayLike, NDArray
 
 from gmid.filters.elements import AmplifierModel
 from gmid.filters.realisation import Realisation
 from gmid.network import find_poles
-from gmid.network.pencil import ComplexArray
+from gmid.network.pencil import ComplexArray, FloatArray
 
 LARGEST_GAIN = 1e3
 """Where the search for the limit of the common-mode gain ends [-]."""
 
 _OUTPUT = 1e-3
+_FIRST = 0.1
 _STEP = 1.1
+_TOGETHER = 24
 _ACCURACY = 1e-4
 _EDGE = 1e-9
 
@@ -61,7 +64,7 @@ class CommonModeLimit:
 
 
 def find_common_mode_poles(
-    realisation: Realisation, gain: float, *, sign: int = -1
+    realisation: Realisation, gain: ArrayLike, *, sign: int = -1
 ) -> ComplexArray:
     """Find the poles of the common mode with amplifiers of a given common-mode gain.
 
@@ -69,14 +72,14 @@ def find_common_mode_poles(
     ----------
     realisation : Realisation
         The filter.
-    gain : float
+    gain : array_like of float, shape (...)
         Magnitude of the gain from input to output common mode [-].
     sign : int
         1 if it does not invert, -1 if it inverts.
 
     Returns
     -------
-    ndarray of complex, shape (n,)
+    ndarray of complex, shape (..., n)
         [rad/s].
 
     Examples
@@ -86,11 +89,11 @@ def find_common_mode_poles(
     >>> bool((find_common_mode_poles(made, 0.5).real < 0).all())
     True
     """
-    model = _model(realisation, gain, sign)
+    model = _model(realisation, np.asarray(gain, dtype=np.float64), sign)
     return find_poles(realisation.network(model, common_mode=True))
 
 
-def _model(realisation: Realisation, gain: float, sign: int) -> dict[str, AmplifierModel]:
+def _model(realisation: Realisation, gain: ArrayLike, sign: int) -> dict[str, AmplifierModel]:
     """Make amplifiers whose low output impedance is that of a common-mode loop."""
     conductances = [
         1.0 / e.value if e.kind == "resistor" else e.value
@@ -99,7 +102,7 @@ def _model(realisation: Realisation, gain: float, sign: int) -> dict[str, Amplif
     strong = max(conductances) / _OUTPUT
     # an active-RC amplifier draws its current out of the output, a transconductor delivers it
     turn = -sign if realisation.style == "active-rc" else sign
-    one = AmplifierModel(gm_total=turn * gain * strong, output_conductance=strong)
+    one = AmplifierModel(gm_total=turn * strong * np.asarray(gain), output_conductance=strong)
     return {place.name: one for place in realisation.amplifiers}
 
 
@@ -136,18 +139,29 @@ def find_common_mode_limit(realisation: Realisation, *, sign: int | None = None)
 
 
 def _search(realisation: Realisation, sign: int) -> CommonModeLimit:
-    low, high = 0.0, 0.1
-    while is_stable(find_common_mode_poles(realisation, high, sign=sign)):
-        low, high = high, high * _STEP
-        if high > LARGEST_GAIN:
-            return CommonModeLimit(np.inf, sign, 0)
+    steps = int(np.ceil(np.log(LARGEST_GAIN / _FIRST) / np.log(_STEP))) + 1
+    gains = np.concatenate([[0.0], _FIRST * _STEP ** np.arange(steps)])
+    for part in np.array_split(gains[1:], max(1, steps // _TOGETHER)):
+        bad = ~_are_stable(find_common_mode_poles(realisation, part, sign=sign))
+        if bad.any():
+            break
+    else:
+        return CommonModeLimit(np.inf, sign, 0)
+    high = float(part[np.argmax(bad)])
+    low = float(gains[np.searchsorted(gains, high) - 1])
     while high - low > _ACCURACY * high:
-        middle = 0.5 * (low + high)
-        if is_stable(find_common_mode_poles(realisation, middle, sign=sign)):
-            low = middle
-        else:
-            high = middle
+        between = np.linspace(low, high, _TOGETHER)
+        bad = ~_are_stable(find_common_mode_poles(realisation, between[1:-1], sign=sign))
+        k = int(np.argmax(np.append(bad, True)))
+        low, high = float(between[k]), float(between[k + 1])
     return CommonModeLimit(low, sign, _find_culprit(realisation, high, sign))
+
+
+def _are_stable(poles: ComplexArray) -> NDArray[np.bool_]:
+    """Say of each row of poles whether all are in the left half plane."""
+    size = np.where(np.isfinite(poles), np.abs(poles), 0.0)
+    real: FloatArray = np.where(np.isfinite(poles), poles.real, -np.inf)
+    return np.asarray(np.all(real <= _EDGE * size.max(axis=-1, keepdims=True), axis=-1))
 
 
 def is_stable(poles: ComplexArray) -> bool:

@@ -164,7 +164,7 @@ def _small_signal(found: Findings, k: int) -> dict[str, Requirement]:
         why_gm = f"{bound}; {alone}"
         why_pole = _explain_pole(found, k)
     why_gain = (
-        "asked for" if found.is_gain_given
+        "as it was given" if found.is_gain_given
         else "bandwidth then costs about a tenth more than with infinite gain"
     )  # fmt: skip
     named = {

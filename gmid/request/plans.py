@@ -67,8 +67,7 @@ def has_filter(file: PlanFile) -> bool:
     Returns
     -------
     bool
-        True where it is an active-RC filter and every amplifier says where it stands; a gm-c
-        filter's elements are its amplifiers, so that only sizing knows it as a whole.
+        True where there is a filter and every amplifier says where it stands.
 
     Examples
     --------
@@ -78,10 +77,7 @@ def has_filter(file: PlanFile) -> bool:
     >>> has_filter(PlanFile(parse_request(EXAMPLE), (example_plan(),)))
     False
     """
-    spec = file.request.spec
-    if spec is None or spec.style != "active-rc":
-        return False
-    return all(plan.positions for plan in file.plans)
+    return file.request.spec is not None and all(plan.positions for plan in file.plans)
 
 
 def read_plan(path: str | Path) -> PlanFile:

@@ -83,8 +83,8 @@ def draw_filter(found: FilterDemands) -> dict[str, str]:
     return {name: drawn.decode() for name, drawn in draw_filter_figures(found).items()}
 
 
-def draw_realised(found: FilterDemands, curves: Sequence[ResponseCurve]) -> str:
-    """Draw the response with the real amplifiers as text.
+def draw_realised(found: FilterDemands, curves: Sequence[ResponseCurve]) -> dict[str, str]:
+    """Draw the figures of a filter with its real amplifiers as text.
 
     Parameters
     ----------
@@ -95,8 +95,8 @@ def draw_realised(found: FilterDemands, curves: Sequence[ResponseCurve]) -> str:
 
     Returns
     -------
-    str
-        SVG.
+    dict of str to str
+        As `draw_filter`.
 
     Examples
     --------
@@ -107,11 +107,15 @@ def draw_realised(found: FilterDemands, curves: Sequence[ResponseCurve]) -> str:
     >>> spec = FilterSpec(response="butterworth", order=2, edge=1e6, capacitor=2e-12)
     >>> found = demands_of(spec, Tolerance(passband_db=0.2, counts="tuned-shape"))
     >>> curve = trace_response(found, check_filter(found, found.models))
-    >>> "<svg" in draw_realised(found, [curve])
-    True
+    >>> sorted(draw_realised(found, [curve]))
+    ['filter_response', 'filter_trade_off']
     """
     with drawing():
-        return save_figure(draw_response(found, curves), "svg").decode()
+        figures = {
+            "filter_response": draw_response(found, curves),
+            "filter_trade_off": draw_trade_off(found),
+        }
+        return {name: save_figure(one, "svg").decode() for name, one in figures.items()}
 
 
 def _name_corner(rscale: float) -> str:
@@ -157,7 +161,7 @@ def draw_response(found: FilterDemands, curves: Sequence[ResponseCurve]) -> Figu
     """
     if not curves:
         raise UsageFault("a figure of the response needs at least one curve.")
-    figure = new_figure(160, 120)
+    figure = new_figure(160, 130)
     top, bottom = figure.subplots(2, 1, height_ratios=(3, 2))
     every = np.concatenate([curve.frequency for curve in curves])
     prefix, power = choose_prefix([float(found.plane.fine.passband[1])])
@@ -165,6 +169,8 @@ def draw_response(found: FilterDemands, curves: Sequence[ResponseCurve]) -> Figu
     _draw_gain(top, found, curves, (float(every.min()), float(every.max())), divisor)
     _draw_deviation(bottom, found, curves, divisor)
     bottom.set_xlabel(f"Frequency [{prefix}Hz]")
+    lines = [*top.get_lines()[:1], *bottom.get_lines()]
+    figure.legend(handles=lines, loc="outside lower center", ncols=4 if len(lines) > 4 else 2)
     return figure
 
 
@@ -186,7 +192,6 @@ def _draw_gain(
     axes.set_ylim(max(_FLOOR_DB, lowest - 5.0), stick.reference_db + 5.0)
     axes.set_xlim(band[0] / divisor, band[1] / divisor)
     axes.set_ylabel("Gain [dB]")
-    axes.legend(loc="lower left")
 
 
 def _draw_mask(axes: Axes, found: FilterDemands, band: tuple[float, float], divisor: float) -> None:
@@ -218,9 +223,8 @@ def _draw_deviation(
                    choose_style(k), label=f"{curve.condition}{aside}")  # fmt: skip
         largest = max(largest, float(np.abs(curve.deviation_db[there]).max()))
     axes.set_xscale("log" if found.spec.kind != "bandpass" else "linear")
-    axes.set_ylim(-1.25 * largest, 1.8 * largest)
+    axes.set_ylim(-1.25 * largest, 1.25 * largest)
     axes.set_ylabel("Deviation [dB]")
-    axes.legend(loc="upper left")
 
 
 def draw_trade_off(found: FilterDemands) -> Figure:

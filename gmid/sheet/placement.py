@@ -35,8 +35,8 @@ def fill_panels(
     Yields
     ------
     list of Panel
-        The signal path; then sensing and error amplifier; then the bias branch; last what has
-        no place of its own.
+        The signal path; then sensing and error amplifier; then the bias branch, and what is built
+        in at the outputs; last what has no place of its own.
 
     Examples
     --------
@@ -58,7 +58,9 @@ def fill_panels(
     levels = 4 if "direct_cascode_p" in elements else 3
     bias = start("Bias", 2 * _EDGE + 110)
     _place_bias(bias)
-    last = close(bias)
+    ballast = start("At the outputs", 2 * _EDGE + 60)
+    _place_output_capacitors(ballast)
+    last = close(bias, ballast)
     signal = start("Signal path", 2 * _EDGE + _STEP * (levels - 1))
     _place_signal(signal, levels)
     rows = [close(signal)]
@@ -185,6 +187,12 @@ def _place_pairs(panel: Panel) -> None:
     panel.join(low, "error_load_s.g", "error_load_m.g")
     drains = ("sense_pair_pm.d", "sense_pair_nm.d", "error_load_m.d")
     _place_compensation(panel, low - 48, drains, 92)
+
+
+def _place_output_capacitors(panel: Panel) -> None:
+    for name, x in (("cout_p", 0.0), ("cout_n", 140.0)):
+        if name in panel.elements:
+            panel.put(name, x, _EDGE + 30, vertical=True)
 
 
 def _place_bias(panel: Panel) -> None:

@@ -103,14 +103,14 @@ def _review_filter(file: PlanFile, bench: Bench, progress: Progress | None) -> F
     if not has_filter(file):
         return None
     from gmid.amplifier.filtering.reviewing import review_filter
-    from gmid.tasks.demanding import demands
     from gmid.tasks.filter_sizing import fill_reviewed
+    from gmid.tasks.rebuilding import rebuild_filter
 
     def tell(words: str) -> None:
         if progress:
             progress(words, 0, 1)
 
-    found = demands(request)
+    found = rebuild_filter(file, bench)
     review = review_filter(found, file.plans, bench, request.supply, progress=tell)
     return fill_reviewed(found, review)
 

@@ -19,7 +19,7 @@ from gmid.request.process import Bench
 from gmid.request.request import Request
 from gmid.sheet.amplifiers import Reviewed, fill_amplifier, fill_checks
 from gmid.sheet.data import FilterSheet, ResponseRow
-from gmid.sheet.filter_figures import draw_filter, draw_realised
+from gmid.sheet.filter_figures import draw_realised
 from gmid.sheet.filters import fill_filter
 from gmid.sheet.plots import draw_figures
 from gmid.tasks.checking import assemble_sheet
@@ -82,10 +82,7 @@ def size_filter_request(
             found.plans, found.predictions, found.amplifier_checks, strict=True
         )
     )  # fmt: skip
-    figures = {
-        **draw_filter(found.demands),
-        "filter_response": draw_realised(found.demands, _choose_curves(found)),
-    }
+    figures = draw_realised(found.demands, _choose_curves(found))
     for one in reviews:
         figures |= draw_figures(one)
     filtered = fill_reviewed(found.demands, found.review, facts=_list_facts(found))

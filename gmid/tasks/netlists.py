@@ -40,9 +40,9 @@ def netlists(plan: str | Path | PlanFile) -> dict[str, str]:
     if has_filter(file):
         from gmid.amplifier.filtering.decks import write_filter_deck
         from gmid.amplifier.filtering.positions import place_plans
-        from gmid.tasks.demanding import demands
+        from gmid.tasks.rebuilding import rebuild_filter
 
-        made = demands(file.request).realisation
+        made = rebuild_filter(file, open_bench(file.request.process)).realisation
         found["filter.cir"] = write_filter_deck(
             made, place_plans(file.plans, made), file.request.supply
         )

@@ -151,10 +151,10 @@ def simulate(
         )  # fmt: skip
         yield Compared(one.name, where, tuple(compare_plan(predicted, simulated)))
     if has_filter(file):
-        from gmid.tasks.demanding import demands
         from gmid.tasks.filter_simulating import compare_filter
+        from gmid.tasks.rebuilding import rebuild_filter
 
-        whole = demands(request)
+        whole = rebuild_filter(file, bench)
         for condition in models:
             for voltage in levels:
                 where = spell_condition(condition, voltage)

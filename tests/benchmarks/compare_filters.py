@@ -74,7 +74,7 @@ def main(names: list[str]) -> None:
             verdict, text = "refused", str(trouble)
         else:
             verdict = "met" if found.is_met else "missed"
-            text = repr(found)
+            text = f"{found!r}, {found.review.largest_current / found.floor:.2f} times the floor"
             if found.is_met:
                 error, deviation = simulate(request, found)
                 text += f"; simulated: {error:.4f} dB off, {deviation:.3f} dB from ideal"

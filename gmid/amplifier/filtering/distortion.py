@@ -9,7 +9,7 @@ output; all amplifiers add up with their phases. Harmonics do not act back.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -233,17 +233,20 @@ def measure_harmonic(
     fundamental, carried = _find_phasors(found, frequency)
     end = fundamental[..., -1]
     shares: dict[str, ComplexArray] = {}
-    for plan, positions in _group(found.plans):
+    for unit, positions in _group(found.plans):
         rows = [k for k, place in enumerate(places) if place.name in positions]
         x = amplitude * fundamental[..., [2 * k for k in rows]]
         y = amplitude * fundamental[..., [2 * k + 1 for k in rows]]
         peaks = [np.maximum(np.abs(part).max(axis=-1), _LEAST) for part in (x, y)]
-        surface = trace_surface(plan, devices, supply, found.voltage, (peaks[0], peaks[1]))
+        surface = trace_surface(unit, devices, supply, found.voltage, (peaks[0], peaks[1]))
         for column, k in enumerate(rows):
-            current = surface.find_harmonic(x[..., column], y[..., column])
+            name = places[k].name
+            current = positions[name] * surface.find_harmonic(x[..., column], y[..., column])
             # the half circuit carries one side's current; both sides together make twice
-            shares[places[k].name] = 2 * carried[..., k] * current / (amplitude * end)
-    return FilterHarmonic(frequency, amplitude, shares)
+            shares[name] = 2 * carried[..., k] * current / (amplitude * end)
+    return FilterHarmonic(
+        frequency, amplitude, {place.name: shares[place.name] for place in places}
+    )
 
 
 def _find_phasors(found: RealisedFilter, frequency: float) -> tuple[ComplexArray, ComplexArray]:
@@ -271,9 +274,13 @@ def _find_phasors(found: RealisedFilter, frequency: float) -> tuple[ComplexArray
     return both[..., 0, :, 0], both[..., 1, -1, 1:]
 
 
-def _group(plans: Mapping[str, AmplifierPlan]) -> Sequence[tuple[AmplifierPlan, list[str]]]:
-    """Put positions with the same amplifier together."""
-    found: dict[int, tuple[AmplifierPlan, list[str]]] = {}
+def _group(
+    plans: Mapping[str, AmplifierPlan],
+) -> Sequence[tuple[AmplifierPlan, dict[str, int]]]:
+    """Put positions of the same unit together, each with how many it has."""
+    found: dict[int, tuple[AmplifierPlan, dict[str, int]]] = {}
     for name, plan in plans.items():
-        found.setdefault(id(plan), (plan, []))[1].append(name)
+        # multiples of one unit share its transistors
+        unit = found.setdefault(id(plan.transistors), (replace(plan, multiple=1), {}))
+        unit[1][name] = plan.multiple
     return list(found.values())

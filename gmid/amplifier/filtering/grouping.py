@@ -11,67 +11,12 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from gmid.amplifier.filtering.counting import Efficiency, choose_counts
 from gmid.amplifier.plan import AmplifierPlan, Requirement
 from gmid.filters.demand_types import Demand, FilterDemands
 
-LARGEST_MULTIPLE = 8
-"""So many base amplifiers at most make one position's."""
-
-CURRENT_SHARE = 0.4
-"""Largest output current over the supply current of a plain amplifier; common practice."""
-
-OVERHEAD = 8.0
-"""Current of bias and common-mode loop over the reference current [-]; common practice."""
-
-EFFICIENCY = 8.0
-"""gm_total over the supply current of a plain amplifier [1/V]; common practice."""
-
 LEAST_LOAD = 1e-15
 """Load of an output that drives nothing but its own feedback: no plan has none at all [F]."""
-
-_WORTH = 0.95  # what costs little more but has fewer and larger amplifiers is taken
-
-
-@dataclass(frozen=True)
-class Efficiency:
-    """What an amplifier gives for its supply current.
-
-    Parameters
-    ----------
-    transconductance : float
-        gm_total over supply current [1/V].
-    current : float
-        Largest output current over supply current [-].
-    overhead : float
-        What bias and common-mode loop of each unit draw besides [A].
-
-    Examples
-    --------
-    >>> Efficiency().transconductance
-    8.0
-    """
-
-    transconductance: float = EFFICIENCY
-    current: float = CURRENT_SHARE
-    overhead: float = 0.0
-
-    def need(self, demand: Demand) -> float:
-        """Estimate the supply current that a demand asks for.
-
-        Parameters
-        ----------
-        demand : Demand
-            Of one position.
-
-        Returns
-        -------
-        float
-            [A].
-        """
-        need = demand["gm_total"].value / self.transconductance
-        if "output_current" in demand.requirements:
-            need = max(need, demand["output_current"].value / self.current)
-        return need
 
 
 @dataclass(frozen=True)
@@ -91,6 +36,8 @@ class Grouping:
     least_share : float
         Part of a gm-c transconductance that its worst condition must have; tuning makes up for
         the rest [-].
+    largest_load : float
+        Of one base amplifier: the largest capacitance of all positions [F].
 
     Examples
     --------
@@ -104,6 +51,7 @@ class Grouping:
     load_resistance: float
     cost: float
     least_share: float = 1.0
+    largest_load: float = float("nan")
 
     @property
     def distinct(self) -> tuple[int, ...]:
@@ -142,17 +90,8 @@ def group_positions(
     known = efficiency or Efficiency()
     needs = np.array([known.need(demand) for demand in found.demands])
     names = [demand.position for demand in found.demands]
-    choices = [(float(len(names) * (needs.max() + known.overhead)), [1] * len(names))]
-    if not alike:
-        # the larger the unit, the fewer transistors and the finer its own counts
-        for unit in np.unique(needs[:, None] / np.arange(1, LARGEST_MULTIPLE + 1))[::-1]:
-            counts = np.ceil(needs / unit - 1e-9).astype(int)
-            if counts.max() <= LARGEST_MULTIPLE:
-                cost = float((unit + known.overhead) * counts.sum())
-                choices.append((cost, [int(count) for count in counts]))
-    least = min(cost for cost, _ in choices)
-    best = next(choice for choice in choices if choice[0] * _WORTH <= least)
-    return regroup(found, dict(zip(names, best[1], strict=True)), cost=best[0])
+    cost, counts = choose_counts(needs, known.overhead, alike=alike)
+    return regroup(found, dict(zip(names, counts, strict=True)), cost=cost)
 
 
 def regroup(
@@ -188,6 +127,7 @@ def regroup(
         max(LEAST_LOAD, min(c / multiples[name] for name, (c, _) in loads.items())),
         min(r * multiples[name] for name, (_, r) in loads.items()),
         cost, least_share,
+        max(LEAST_LOAD, *(c / multiples[name] for name, (c, _) in loads.items())),
     )  # fmt: skip
 
 
@@ -369,32 +309,3 @@ def make_plans(
 def _multiply(name: str, one: Requirement, multiple: int) -> Requirement:
     power = {"gm_total": 1.0, "output_current": 1.0, "input_noise": -0.5}.get(name, 0.0)
     return replace(one, value=one.value * multiple**power)
-
-
-def describe_grouping(chosen: Grouping, alike: Grouping) -> str:
-    """Say what several multiples save.
-
-    Parameters
-    ----------
-    chosen, alike : Grouping
-        What was chosen, and one amplifier for all positions.
-
-    Returns
-    -------
-    str
-        One sentence.
-
-    Examples
-    --------
-    >>> one = Grouping({"A1": 1, "A2": 1}, {}, 1e-12, 1e5, 1e-4)
-    >>> describe_grouping(one, one)
-    'One amplifier serves all positions: multiples of a smaller one would save nothing.'
-    """
-    many = sorted(chosen.multiples.values())
-    if many[-1] == 1:
-        return "One amplifier serves all positions: multiples of a smaller one would save nothing."
-    saved = 100 * (1 - chosen.cost / alike.cost)
-    return (
-        f"Multiples {' '.join(str(m) for m in many)} of one base amplifier draw about "
-        f"{saved:.0f} % less than one amplifier for all."
-    )

@@ -1,29 +1,32 @@
-"""The loop between a filter and its amplifiers.
+"""What the rounds between a filter and its amplifiers work with: demands, and one amplifier.
 
-Demands need the amplifiers' own capacitances and noise, amplifiers need the demands: rounds find
-demands, size an amplifier where that at hand misses them, and read what it brings along.
+Demands need the amplifiers' own capacitances and noise, amplifiers need the demands. Here stand
+both steps: demands with what an amplifier brings along, and an amplifier for the demands.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from contextlib import suppress
 from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 
 from gmid.amplifier.checks import judge
-from gmid.amplifier.filtering.grouping import (
+from gmid.amplifier.filtering.counting import (
     OVERHEAD,
     Efficiency,
+    choose_counts,
+    describe_counts,
+)
+from gmid.amplifier.filtering.grouping import (
     Grouping,
-    describe_grouping,
     find_noise_frequency,
     group_positions,
-    make_plans,
     regroup,
 )
-from gmid.amplifier.filtering.levelling import level_filter
+from gmid.amplifier.filtering.pairs import list_smaller_pairs
 from gmid.amplifier.filtering.poles import (
     BUILT_SHARES,
     OWN_SHARES,
@@ -31,11 +34,18 @@ from gmid.amplifier.filtering.poles import (
     estimate_noise_factor,
     estimate_pole,
 )
-from gmid.amplifier.filtering.result import FilterSizing
-from gmid.amplifier.filtering.reviewing import review_filter
+from gmid.amplifier.filtering.reach import (
+    EASED_POLE,
+    EASED_SWING,
+    describe_speed,
+    describe_swing,
+    ease_demands,
+    find_fastest_pole,
+    find_largest_swing,
+    weigh_gain,
+)
 from gmid.amplifier.filtering.sized import Sized
 from gmid.amplifier.filtering.transconductors import choose_multiples, find_unit, fit_elements
-from gmid.amplifier.filtering.trimming import measure_usage
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Requirement, Supply
 from gmid.amplifier.predicting import predict_each
 from gmid.amplifier.prediction import Prediction
@@ -43,7 +53,10 @@ from gmid.condition import Condition
 from gmid.device.device import Device
 from gmid.errors import NoSolution
 from gmid.filters.demand import demands_of
+from gmid.filters.demand_filter import Own
+from gmid.filters.demand_level import Estimate, estimate_demands
 from gmid.filters.demand_types import FilterDemands
+from gmid.filters.deviation import MEANINGS
 from gmid.filters.elements import AmplifierModel
 from gmid.filters.passives import Passives
 from gmid.filters.realisation import Realisation
@@ -58,29 +71,23 @@ LEAST_SHARE = 0.8
 """Transconductance of a gm-c amplifier in its worst condition over the nominal one, before it is
 known [-]; common practice."""
 
-ROUNDS = 4
-"""Rounds of the loop at most."""
-
 RESERVE = 1.03
 """By which amplifiers are sized beyond a round's demands, so that the next does not undo them."""
 
-_SETTLED = 0.01
-_NEAR = 0.06
-_QUIET = 0.85
-_ROUNDED = 0.999  # of a transconductance that the elements are then fitted to
-_DECIBELS = ("dc_gain", "intrinsic_gain", "common_mode_gain")
-_LEAST = ("input_noise", "common_mode_gain")
-_POLE_RESERVE = 1.02
-_LARGEST_GROWTH = 1.3
-_SQUEEZE = 0.97
-_ENOUGH = 0.99
-_TRIMS = (1.0, 0.8, 1.25)
+SETTLED = 0.01
+"""Relative change of a level or a transconductance that counts as none [-]."""
+
+_WORTH = 0.95
+_SMALL = 0.02
+_EXCESS = 0.02
+_SEARCHES = 3
+_LONGEST_STEP = 2.5
 _TIGHT = ("gm_total", "excess_pole", "output_current")
 
 
 @dataclass
 class Loop:
-    """The rounds of `size_filter`, whose arguments it takes.
+    """Demands and an amplifier, as the rounds of `size_filter` need them; it takes its arguments.
 
     Parameters
     ----------
@@ -112,16 +119,25 @@ class Loop:
     find: Finder
 
     def __post_init__(self) -> None:
+        self.asked = self.spec
+        self.obstacle = ""
+        self.ease = 1.0
+        limit = find_largest_swing(self.supply)
+        if (self.spec.swing or 0.0) > limit:
+            self.obstacle = describe_swing(float(self.spec.swing or 0.0), limit, self.supply)
+            self.spec = self.spec.with_values(swing=EASED_SWING * limit)
         self.hottest = max(condition.temperature for condition, _ in self.bench)
         self.pole = estimate_pole(list(self.bench), self.roles, self.supply)
         self.noise_factor = self._guess_noise()
         self.efficiency = Efficiency(overhead=OVERHEAD * self.supply.reference_current)
         self.split: str | dict[str, float] = "alike"
         self.built = 0.0
+        self.target = 0.0
         self.squeeze = 1.0
         self.least_share = LEAST_SHARE if self.spec.style == "gm-c" else 1.0
         self.multiples: dict[str, int] | None = None
         self.notes: list[str] = []
+        self._judged: tuple[Sized, FilterDemands, bool] | None = None
         self.found: FilterDemands
         self.grouping: Grouping
 
@@ -131,121 +147,6 @@ class Loop:
             return WHITE_NOISE_FACTOR
         frequency = find_noise_frequency(self.spec.noise_band)
         return estimate_noise_factor(self.bench[0][1], self.roles, self.supply, frequency)
-
-    def run(self) -> FilterSizing:
-        """Go round until nothing moves and the real filter keeps its tolerance."""
-        self._begin()
-        sized: Sized | None = None
-        k = 0
-        while True:
-            k += 1
-            if sized is None or not self._serves(sized):
-                if sized is not None and not self._is_worth_another(sized):
-                    break
-                self.say(k / (ROUNDS + 2), f"round {k}: an amplifier")
-                sized = self._size()
-            level = self._level(sized, first=k == 1)
-            before = self.found.realisation.capacitor
-            moved = abs(level.capacitor / before - 1.0)
-            self.say((k + 0.6) / (ROUNDS + 2), f"round {k}: demands with its own capacitances")
-            sized = self._feed_back(sized, level)
-            if moved >= _SETTLED or not self._serves(sized):
-                if k == ROUNDS:
-                    break
-                # at a lower level a smaller amplifier does
-                sized = None if level.capacitor < (1 - _SETTLED) * before else sized
-                continue
-            used, sized = self._trim(sized)
-            if used <= 1.0 or k >= ROUNDS or not np.isfinite(used):
-                break
-            # amplifiers as demanded do not keep it: those of a tighter tolerance will
-            self.squeeze *= _SQUEEZE / used
-            self.say((k + 0.9) / (ROUNDS + 2), f"round {k}: {100 * used:.4g} % of the tolerance")
-            self._demand(self.found.realisation, self._own(sized))
-        assert sized is not None, "only a further round starts without an amplifier"
-        return self._finish(sized, k)
-
-    def _is_worth_another(self, sized: Sized) -> bool:
-        """Tell whether a search may find more than the last one: not where that missed as much."""
-        if sized.met:
-            return True
-        eased = False
-        for name, one in self._asked().items():
-            before = sized.asked[name]
-            change = (one.value - before) / (1.0 if name in _DECIBELS else max(before, 1e-30))
-            harder = -change if name in _LEAST else change
-            if harder > _NEAR:
-                return False
-            eased = eased or harder < -_NEAR
-        return eased
-
-    def _trim(self, sized: Sized) -> tuple[float, Sized]:
-        """Use spare noise and other output capacitances where the tolerance is broken."""
-        used = self._measure(sized)
-        if used <= 1.0 or self.spec.style == "gm-c":
-            return used, sized
-        before = (self.found, self.grouping, self.built)
-        spare = level_filter(
-            self.found, self._place(sized), self.bench, self.supply, keep_amplifiers=True
-        )
-        for level in dict.fromkeys((spare, before[0].realisation)):
-            for factor in _TRIMS:
-                tried = self._resize(sized, before[2] * factor)
-                self._demand(level, self._own(tried))
-                better = self._measure(tried)
-                if better <= _ENOUGH and self._serves(tried):
-                    return better, tried
-        self.found, self.grouping, self.built = before
-        return used, sized
-
-    def _measure(self, sized: Sized) -> float:
-        return measure_usage(
-            self.found, self._place(sized), self.bench, self.supply, tolerance=self.tolerance
-        )
-
-    def _level(self, sized: Sized, *, first: bool) -> Realisation:
-        """Set the impedance level by the noise, in gm-c by the transconductance that is there."""
-        plans = self._place(sized)
-        if self.spec.style != "gm-c":
-            lower = first and self._is_quiet(sized)
-            return level_filter(self.found, plans, self.bench, self.supply, lower=lower)
-        nominal = sized.at_nominal
-        unit = float(np.asarray(nominal.gm_total))
-        self.least_share = _ROUNDED * float(np.min(np.asarray(sized.model.gm_total))) / unit
-        models = {name: nominal.scaled(m) for name, m in self.grouping.multiples.items()}
-        made = fit_elements(self.found.realisation, self.grouping.multiples, unit, models=models)
-        if self.spec.snr_db is None or self.spec.capacitor is not None:
-            return made
-        there = replace(self.found, realisation=made)
-        grown = level_filter(there, plans, self.bench, self.supply).capacitor / made.capacitor
-        if grown <= 1.0:
-            return made
-        return fit_elements(made, self.grouping.multiples, unit * grown, models=models)
-
-    def _is_quiet(self, sized: Sized) -> bool:
-        """Tell whether the amplifier makes much less noise than it may, for other reasons."""
-        wanted = self.grouping.demands.get("input_noise")
-        if wanted is None or wanted.at is None:
-            return False
-        noise = max(float(p.noise([wanted.at]).input_density.max()) for p in sized.predictions)
-        return noise < _QUIET * wanted.value
-
-    def _feed_back(self, sized: Sized, level: Realisation) -> Sized:
-        """Find the demands with what the amplifier brings along.
-
-        Where they ask for a faster excess-phase pole than it has, more is built in at its outputs.
-        """
-        self._demand(level, self._own(sized))
-        if self.spec.style == "gm-c":
-            return sized
-        slowest = float(np.min(np.asarray(sized.model.excess_pole)))
-        wanted = self.grouping.demands["excess_pole"].value
-        if wanted > slowest:
-            outputs, _ = sized.largest_capacitances
-            more = outputs * min(wanted / slowest * _POLE_RESERVE, _LARGEST_GROWTH) - outputs
-            sized = self._resize(sized, self.built + more)
-            self._demand(level, self._own(sized))
-        return sized
 
     def _begin(self) -> None:
         """Find first demands, choose what is built in at the outputs, and how positions differ."""
@@ -258,38 +159,88 @@ class Loop:
             self._demand(fit_elements(made, self.multiples, unit), None)
             return
         guess = (self.spec.capacitor or 4e-12) * BUILT_SHARES[1]
-        self._demand(None, AmplifierModel(output_capacitance=guess))
-        self.guessed = max(one["gm_total"].value for one in self.found.demands) / (
-            2 * np.pi * self.pole
-        )
-        made = self.found.realisation
+        first = self._estimate(None, AmplifierModel(output_capacitance=guess))
+        made = first.realisation
+        if self._refuse_speed(first):
+            self._set_outputs(guess, 0.0)
+            self._demand(made, AmplifierModel(output_capacitance=guess))
+            return
+        self.guessed = float(first.gm_total.max()) / (2 * np.pi * self.pole)
         tried = []
         for share in BUILT_SHARES:
             built = share * made.capacitor
             try:
-                self._demand(made, self._guess(built))
+                found = self._estimate(made, self._guess(built))
             except NoSolution:  # too slow a loop for this tolerance: less is tried besides
                 continue
-            tried.append((self._price(), built, self.found, self.grouping))
+            tried.append((self._price(found), built, found))
         if not tried:
-            self._demand(made, None)
-            tried = [(self._price(), 0.0, self.found, self.grouping)]
-        _, self.built, kept, alike = min(tried, key=lambda entry: entry[:2])
+            raise NoSolution(
+                "no amplifier keeps the tolerance with the capacitances that come with it.",
+                where="tolerance.passband", hint="Allow more, or ask for a larger capacitor.",
+            )  # fmt: skip
+        _, built, found = min(tried, key=lambda entry: entry[:2])
+        self._choose_multiples(made, built, found)
+
+    def _choose_multiples(self, made: Realisation, built: float, found: Estimate) -> None:
+        """Choose how positions differ, and find the demands of that."""
+        own = OWN_SHARES[0] * self.guessed
         self.say(0.06, "demands, each amplifier by itself")
+        needs = self.efficiency.need_for(found.gm_total)
+        alike = choose_counts(needs, self.efficiency.overhead, alike=True)
         self.split = "each"
-        self._demand(made, self._guess(self.built))
-        each = group_positions(self.found, efficiency=self.efficiency)
-        if each.cost >= alike.cost * 0.95:
-            self.found, self.grouping, self.multiples = kept, alike, alike.multiples
-            self.split = "alike"
-        else:
-            self.multiples = each.multiples
-            self.split = {name: float(m) for name, m in each.multiples.items()}
-            self.built /= float(np.mean(list(each.multiples.values())))
-            self._demand(made, {
-                name: self._guess(self.built * m) for name, m in each.multiples.items()
-            })  # fmt: skip
-        self.notes.append(describe_grouping(alike if self.split == "alike" else each, alike))
+        each = choose_counts(
+            self.efficiency.need_for(self._estimate(made, self._guess(built)).gm_total),
+            self.efficiency.overhead,
+        )  # fmt: skip
+        names = [place.name for place in made.amplifiers]
+        cost, counts = each if each[0] < _WORTH * alike[0] else alike
+        self.notes.append(describe_counts(counts, cost, alike[0]))
+        if max(counts) == 1:
+            self.split, self.multiples = "alike", dict.fromkeys(names, 1)
+            self._set_outputs(built, own)
+            self._demand(made, self._guess(built))
+            return
+        self.multiples = dict(zip(names, counts, strict=True))
+        self.split = {name: float(m) for name, m in self.multiples.items()}
+        mean = float(np.mean(counts))
+        self._set_outputs(built / mean, own / mean)
+        self._demand(made, {
+            name: self._guess(built * m / mean) for name, m in self.multiples.items()
+        })  # fmt: skip
+
+    def _estimate(self, realisation: Realisation | None, own: Own) -> Estimate:
+        return estimate_demands(
+            self.spec, self.tolerance, self.passives, realisation=realisation, own=own,
+            split=self.split, noise_factor=self.noise_factor, temperature=self.hottest,
+            phase_margin=self.choices.loop_phase_margin,
+        )  # fmt: skip
+
+    def _set_outputs(self, built: float, own: float) -> None:
+        """Set what is built in at the outputs, and what that makes with a guess of their own."""
+        self.built, self.target = built, built + own
+
+    def _refuse_speed(self, found: Estimate) -> bool:
+        """Tell whether no amplifier can be so fast; those of usual mirrors are then the nearest."""
+        wanted = float(found.excess_pole.max())
+        fastest = find_fastest_pole(self.bench, self.roles, self.supply)
+        if wanted <= fastest:
+            return False
+        self.ease = EASED_POLE * self.pole / wanted
+        self.obstacle = self.obstacle or describe_speed(
+            wanted, fastest, self._find_speeds(found.realisation)
+        )
+        return True
+
+    def _find_speeds(self, made: Realisation) -> dict[str, float]:
+        """Find the pole that each meaning of the tolerance with less in it asks for [Hz]."""
+        before, found = self.tolerance, {}
+        for counts in MEANINGS[MEANINGS.index(before.counts) + 1 :]:
+            self.tolerance = replace(before, counts=counts)
+            guess = AmplifierModel(output_capacitance=BUILT_SHARES[-1] * made.capacitor)
+            found[counts] = float(self._estimate(made, guess).excess_pole.max())
+        self.tolerance = before
+        return found
 
     def _guess(self, built: float) -> AmplifierModel:
         """Guess what an amplifier brings along besides what is built in at its outputs."""
@@ -298,51 +249,114 @@ class Loop:
             input_capacitance=OWN_SHARES[1] * self.guessed,
         )
 
-    def _price(self) -> float:
+    def _price(self, found: Estimate) -> float:
         """Weigh the current for gm_total against what a fast excess-phase pole costs."""
-        return self.grouping.cost * (1 + self.grouping.demands["excess_pole"].value / self.pole)
+        current = self.efficiency.need_for(found.gm_total).max() + self.efficiency.overhead
+        return float(current * (1 + found.excess_pole.max() / self.pole))
 
     def _demand(
-        self, realisation: Realisation | None,
-        own: AmplifierModel | Mapping[str, AmplifierModel] | None,
+        self, realisation: Realisation | None, own: Own | None, *, gain: float | None = None,
     ) -> None:  # fmt: skip
-        tightened = replace(self.tolerance, passband_db=self.tolerance.passband_db * self.squeeze)
-        self.found = demands_of(
-            self.spec, tightened, self.passives, realisation=realisation, own=own,
-            split=self.split, noise_factor=self.noise_factor, temperature=self.hottest,
-            phase_margin=self.choices.loop_phase_margin,
-        )  # fmt: skip
+        """Find the demands, for an intrinsic gain where one is given.
+
+        Where hardly any bandwidth may be lost for gain, more of it is given for less gain.
+        """
+        self.found = self._derive(realisation, own, gain)
+        for easier in () if gain is not None else weigh_gain(self.found.trade_off):
+            with suppress(NoSolution):  # where errors cancel at that gain, at one beside it not
+                self.found = self._derive(self.found.realisation, own, easier)
+                break
         self.grouping = (
             group_positions(self.found, alike=True, efficiency=self.efficiency)
             if self.multiples is None
             else regroup(self.found, self.multiples, least_share=self.least_share)
         )
 
-    def _size(self) -> Sized:
-        built = self.built
+    def _derive(
+        self, realisation: Realisation | None, own: Own | None, gain: float | None
+    ) -> FilterDemands:
+        tightened = replace(self.tolerance, passband_db=self.tolerance.passband_db * self.squeeze)
+        return demands_of(
+            self.spec, tightened, self.passives, realisation=realisation, own=own,
+            split=self.split, noise_factor=self.noise_factor, temperature=self.hottest,
+            phase_margin=self.choices.loop_phase_margin, intrinsic_gain=gain,
+        )  # fmt: skip
+
+    def _size(self, choices: Choices | None = None) -> Sized:
+        """Find an amplifier for the demands, and build in at its outputs what its own lack."""
+        asked = self._asked()
         wanted = {
             name: replace(one, value=one.value * (RESERVE if name in _TIGHT else 1.0))
-            for name, one in self._asked().items()
+            for name, one in asked.items()
         }
         result = self.find(
-            wanted, load_capacitance=self.grouping.load_capacitance + built,
+            wanted, load_capacitance=self.grouping.load_capacitance + self.built,
             load_resistance=self._search_load, bench=self.bench, roles=self.roles,
-            own_well=self.own_well, supply=self.supply, choices=self.choices,
+            own_well=self.own_well, supply=self.supply, choices=choices or self.choices,
             matching=self.matching,
         )  # fmt: skip
-        asked = {name: one.value for name, one in self._asked().items()}
-        first = Sized(result.plan, (), result.suggestion, result.floor, asked, result.met)
-        return self._resize(first, built)
+        values = {name: one.value for name, one in asked.items()}
+        first = Sized(result.plan, (), result.suggestion, result.floor, values, result.met)
+        sized = self._resize(first, self.built)
+        if self.spec.style == "gm-c":
+            return sized
+        outputs, _ = sized.largest_capacitances
+        lacking = max(self.target - outputs, -self.built)
+        return (
+            sized if abs(lacking) < _SMALL * outputs else self._resize(sized, self.built + lacking)
+        )
+
+    def _size_linear(self) -> Sized:
+        """Find a transconductor that stays linear in a filter scaled to what it has.
+
+        A search takes transconductance that costs no current: a pair with less of it may do, else
+        a longer one.
+        """
+        choices = self.choices
+        unit = find_unit(self.found.realisation, self.grouping.multiples)
+        for _ in range(_SEARCHES):
+            sized = self._size(choices)
+            excess = float(np.asarray(sized.at_nominal.gm_total)) / unit
+            if excess <= 1 + _EXCESS or not sized.met or self._is_linear(sized, excess):
+                return sized
+            for plan, scale in list_smaller_pairs(
+                sized.base, self.bench[0][1], self.supply, self.choices, wanted=unit
+            ):
+                tried = self._resize(replace(sized, base=plan), self.built)
+                if self._is_linear(tried, scale):
+                    return tried
+            lengths = {**self.choices.smallest_length}
+            pair = sized.base.transistors["pair"]
+            lengths["pair"] = float(np.asarray(pair.length)) * min(excess**2, _LONGEST_STEP)
+            if lengths["pair"] > self.bench[0][1][pair.device].sweep.length[-1]:
+                return sized
+            choices = replace(
+                self.choices, smallest_length=lengths, input_pair=sized.base.input_pair
+            )
+        return sized
+
+    def _is_linear(self, sized: Sized, scale: float) -> bool:
+        """Tell whether an amplifier serves a filter that is scaled to its transconductance."""
+        asked = {name: one for name, one in self._asked().items() if name != "gm_total"}
+        if "output_current" in asked:
+            current = asked["output_current"]
+            asked["output_current"] = replace(current, value=current.value * scale)
+        return self._meets(sized, asked)
+
+    @property
+    def _is_gm_c(self) -> bool:
+        return self.spec.style == "gm-c"
 
     @property
     def _search_load(self) -> float:
         """Load of an amplifier alone; in gm-c loads are other transconductors [ohm]."""
-        return float("inf") if self.spec.style == "gm-c" else self.grouping.load_resistance
+        return float("inf") if self._is_gm_c else self.grouping.load_resistance
 
     def _asked(self) -> dict[str, Requirement]:
         """Ask for the intrinsic gain too: loaded, much gm_total would hide a lossy output."""
         gain = 20 * np.log10(max(one["intrinsic_gain"].value for one in self.found.demands))
-        return {**self.grouping.demands, "intrinsic_gain": Requirement(float(gain))}
+        asked = {**self.grouping.demands, "intrinsic_gain": Requirement(float(gain))}
+        return asked if self.ease == 1.0 else ease_demands(asked, self.ease)
 
     def _resize(self, sized: Sized, built: float) -> Sized:
         """Take another output capacitance, which during a search is part of the load."""
@@ -360,41 +374,23 @@ class Loop:
         """Tell whether the amplifier at hand meets this round's demands at every position."""
         if self.spec.style == "gm-c":
             unit = find_unit(self.found.realisation, self.grouping.multiples)
-            if abs(float(np.asarray(sized.at_nominal.gm_total)) / unit - 1.0) > _SETTLED:
+            if abs(float(np.asarray(sized.at_nominal.gm_total)) / unit - 1.0) > SETTLED:
                 return False
-        alone = replace(
-            sized.base, load_capacitance=self.grouping.load_capacitance,
-            load_resistance=self._search_load, demands=self._asked(),
-        )  # fmt: skip
-        checks = judge(self._predict(alone), self.choices, matching=self.matching)
-        return all(check.met for check in checks)
+        last = self._judged
+        if last is None or last[0] is not sized or last[1] is not self.found:
+            last = self._judged = (sized, self.found, self._meets(sized, self._asked()))
+        return last[2]
 
-    def _place(self, sized: Sized) -> tuple[AmplifierPlan, ...]:
-        return make_plans(sized.base, self.grouping, self.found)
-
-    def _own(self, sized: Sized) -> dict[str, AmplifierModel]:
-        """Give what the amplifier brings along at each position, largest of all conditions."""
-        outputs, inputs = sized.largest_capacitances
-        return {
-            name: AmplifierModel(output_capacitance=outputs * m, input_capacitance=inputs * m)
-            for name, m in self.grouping.multiples.items()
-        }
-
-    def _finish(self, sized: Sized, rounds: int) -> FilterSizing:
-        self.say(0.95, "the whole filter in every condition")
-        if self.squeeze != 1.0:
-            self.notes.append(
-                f"The amplifiers were sized for {100 * self.squeeze:.3g} % of the passband "
-                "tolerance: real excess phase is not one pole."
+    def _meets(self, sized: Sized, demands: Mapping[str, Requirement]) -> bool:
+        """Tell whether the amplifier at hand meets demands, with the loads of the bench."""
+        here = self.grouping
+        loads = (here.load_capacitance, *([here.largest_load] if self._is_gm_c else []))
+        alone = replace(sized.base, load_resistance=self._search_load, demands=dict(demands))
+        return all(
+            check.met
+            for load in loads
+            for check in judge(
+                self._predict(replace(alone, load_capacitance=load)), self.choices,
+                matching=self.matching,
             )
-            self.squeeze = 1.0
-            self._demand(self.found.realisation, self._own(sized))
-        plans = self._place(sized)
-        predictions = tuple(map(self._predict, plans))
-        checks = tuple(judge(one, self.choices, matching=self.matching) for one in predictions)
-        review = review_filter(self.found, plans, self.bench, self.supply)
-        self.say(1.0, "done")
-        return FilterSizing(
-            self.found, plans, predictions, checks, review, rounds, tuple(self.notes),
-            sized.suggestion, sized.floor * sum(self.grouping.multiples.values()),
         )  # fmt: skip

@@ -5,7 +5,7 @@ Nothing is reduced to a model: the half circuit of every amplifier stands in the
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Any
@@ -70,6 +70,7 @@ class RealisedFilter:
     bias: Bias
     voltage: Array
     _networks: dict[str, Network] = field(default_factory=dict, repr=False)
+    _poles: dict[bool, ComplexArray] = field(default_factory=dict, repr=False)
 
     @property
     def condition(self) -> Condition:
@@ -200,7 +201,14 @@ class RealisedFilter:
         ndarray of complex, shape (..., n)
             [rad/s].
         """
-        return find_poles(self.network(rscale=rscale, cscale=cscale, common_mode=common_mode))
+        r, c = np.asarray(rscale), np.asarray(cscale)
+        if np.any(r != 1.0) or np.any(c != 1.0):
+            return find_poles(self.network(rscale=r, cscale=c, common_mode=common_mode))
+        if common_mode not in self._poles:
+            self._poles[common_mode] = find_poles(self.network(common_mode=common_mode))
+        found, batch = self._poles[common_mode], np.broadcast_shapes(r.shape, c.shape)
+        batch = np.broadcast_shapes(batch, found.shape[:-1])
+        return np.asarray(np.broadcast_to(found, (*batch, found.shape[-1])))
 
     def __repr__(self) -> str:
         low, high = float(np.min(self.voltage)), float(np.max(self.voltage))
@@ -283,6 +291,47 @@ def realise_filter(
         known = _start_alone(realisation, plans, devices, supply, levels)
     bias = solve_bias(built.circuit, devices, start=known, mirror=built.mirror).require()
     return RealisedFilter(realisation, plans, built, bias, levels)
+
+
+def realise_everywhere(
+    realisation: Realisation, plans: Mapping[str, AmplifierPlan],
+    bench: Iterable[tuple[Condition, Mapping[str, Device]]], supply: Supply,
+) -> Iterator[tuple[RealisedFilter, Mapping[str, Device]]]:  # fmt: skip
+    """Solve a whole filter in one condition after the other, each from the one before.
+
+    Parameters
+    ----------
+    realisation : Realisation
+        Sections and elements.
+    plans : mapping of str to AmplifierPlan
+        By position.
+    bench : iterable of (Condition, mapping of str to Device)
+        Conditions and devices.
+    supply : Supply
+        What the amplifiers are fed with.
+
+    Yields
+    ------
+    case : RealisedFilter
+        The filter in the next condition.
+    devices : mapping of str to Device
+        Of that condition.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.filters import FilterSpec, realise
+    >>> made = realise(FilterSpec(response="butterworth", order=1, edge=1e6), capacitor=2e-12)
+    >>> devices = example_devices()
+    >>> bench = [(devices["nmos"].condition, devices)]
+    >>> [case for case, _ in realise_everywhere(made, {"A1": example_plan()}, bench,
+    ...                                         example_supply())]
+    [RealisedFilter(1 amplifiers in tt/27, supplies 1.62 to 1.98 V)]
+    """
+    before: RealisedFilter | None = None
+    for _, devices in bench:
+        before = realise_filter(realisation, plans, devices, supply, start=before)
+        yield before, devices
 
 
 def _start_alone(

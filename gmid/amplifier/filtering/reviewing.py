@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from gmid.amplifier.checks import Check, spell_condition
 from gmid.amplifier.filtering.distortion import find_amplitude, measure_harmonic
-from gmid.amplifier.filtering.realised import RealisedFilter, realise_filter
+from gmid.amplifier.filtering.realised import RealisedFilter, realise_everywhere
 from gmid.amplifier.filtering.responses import FilterResponse, collect_responses, find_corners
 from gmid.amplifier.plan import AmplifierPlan, Supply
 from gmid.condition import Condition
@@ -24,6 +24,9 @@ from gmid.filters.demand_types import FilterDemands
 Array = NDArray[np.float64]
 Bench = Iterable[tuple[Condition, Mapping[str, Device]]]
 """Conditions and the devices of each."""
+
+Cases = Iterable[tuple[RealisedFilter, Mapping[str, Device]]]
+"""A filter solved in every condition, and the devices of each."""
 
 Progress = Callable[[str], None]
 
@@ -104,7 +107,7 @@ class _Limit:
 
 def review_filter(
     found: FilterDemands, plans: Sequence[AmplifierPlan], bench: Bench, supply: Supply, *,
-    progress: Progress | None = None,
+    progress: Progress | None = None, cases: Cases | None = None,
 ) -> FilterReview:  # fmt: skip
     """Put the amplifiers into their filter and judge it.
 
@@ -120,6 +123,8 @@ def review_filter(
         What the amplifiers are fed with; low, nominal and high voltage all count.
     progress : callable, optional
         Told each condition.
+    cases : iterable of (RealisedFilter, mapping of str to Device), optional
+        The filter with these amplifiers in every condition, where it is solved already.
 
     Returns
     -------
@@ -153,14 +158,14 @@ def review_filter(
     worst: dict[str, tuple[float, float, str]] = {}
     responses: list[FilterResponse] = []
     first: RealisedFilter | None = None
-    before: RealisedFilter | None = None
     shares: dict[str, float] = {}
     largest = 0.0
-    for condition, devices in bench:
+    if cases is None:
+        cases = realise_everywhere(found.realisation, by_position, bench, supply)
+    for case, devices in cases:
         if progress is not None:
-            progress(f"filter in {condition}")
-        case = realise_filter(found.realisation, by_position, devices, supply, start=before)
-        before, first = case, first or case
+            progress(f"filter in {case.condition}")
+        first = first or case
         measured, part = _measure(found, case, devices, supply)
         responses += collect_responses(found, case)
         shares = shares or part

@@ -59,6 +59,11 @@ class Sized:
         return AmplifierModel(**{name: float(row[row.size // 2]) for name, row in rows.items()})
 
     @property
+    def supply_current(self) -> float:
+        """The largest of all conditions [A]."""
+        return max(float(np.max(one.supply_current)) for one in self.predictions)
+
+    @property
     def largest_capacitances(self) -> tuple[float, float]:
         """Of output and input, what is built in included [F]."""
         outputs, inputs = (

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 
-from gmid.amplifier.filtering.loop import Finder, Loop, Opened, Progress
+from gmid.amplifier.filtering.loop import Finder, Opened, Progress
 from gmid.amplifier.filtering.result import FilterSizing
+from gmid.amplifier.filtering.rounds import Rounds
 from gmid.amplifier.plan import Choices, Matching, Supply
 from gmid.condition import Condition
 from gmid.device.device import Device
@@ -75,7 +76,7 @@ def size_filter(
     opened: Opened = tuple((condition, devices) for condition, devices in bench)
     if not opened:
         raise DataFault("there is no condition to size for.")
-    work = Loop(
+    work = Rounds(
         spec, tolerance, passives or Passives(), opened, dict(roles), tuple(own_well), supply,
         choices or Choices(), matching or {}, progress or (lambda share, words: None),
         finder,

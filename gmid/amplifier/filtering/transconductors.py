@@ -7,12 +7,16 @@ levels inside.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
 
-from gmid.amplifier.filtering.grouping import LARGEST_MULTIPLE
+from gmid.amplifier.filtering.counting import LARGEST_MULTIPLE
+from gmid.amplifier.filtering.positions import make_model, place_plans
+from gmid.amplifier.plan import AmplifierPlan, Supply
+from gmid.amplifier.predicting import predict
+from gmid.device.device import Device
 from gmid.errors import DataFault
 from gmid.filters.elements import AmplifierModel
 from gmid.filters.levels import absorb_parasitics
@@ -107,6 +111,55 @@ def fit_elements(
     level = realisation.capacitor * unit / find_unit(realisation, multiples)
     made = replace(realisation.with_values(values), capacitor=level)
     return made if models is None else absorb_parasitics(made, models)
+
+
+def refit_elements(
+    realisation: Realisation, plans: Sequence[AmplifierPlan], devices: Mapping[str, Device],
+    supply: Supply,
+) -> Realisation:  # fmt: skip
+    """Give a gm-c filter the elements that it was sized with, from its amplifiers.
+
+    Parameters
+    ----------
+    realisation : Realisation
+        Its sections at the capacitor that sizing chose.
+    plans : sequence of AmplifierPlan
+        With positions and multiples.
+    devices : mapping of str to Device
+        Of the nominal condition.
+    supply : Supply
+        What the amplifiers are fed with; its middle counts.
+
+    Returns
+    -------
+    Realisation
+        Transconductances in the ratios of the multiples, own capacitances taken off.
+
+    Raises
+    ------
+    DataFault
+        If a position has no amplifier or two, or a node too much capacitance.
+
+    Examples
+    --------
+    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
+    >>> from gmid.filters import FilterSpec, realise
+    >>> spec = FilterSpec(response="butterworth", order=1, edge=1e6, style="gm-c")
+    >>> made = realise(spec, capacitor=20e-12)
+    >>> plan = replace(example_plan(), positions=("A1", "A2"))
+    >>> found = refit_elements(made, [plan], example_devices(), example_supply())
+    >>> bool(19e-12 < found.find("C1_a").value < 20e-12)
+    True
+    """
+    placed = place_plans(plans, realisation)
+    multiples = {name: plan.multiple for name, plan in placed.items()}
+    alone: dict[str, AmplifierModel] = {}
+    for plan in plans:
+        model = make_model([predict(plan, devices, supply, voltage=supply.voltage)])
+        values = {name: float(np.ravel(value)[0]) for name, value in vars(model).items()}
+        alone[plan.name] = AmplifierModel(**values)
+    models = {name: alone[plan.name] for name, plan in placed.items()}
+    return fit_elements(realisation, multiples, find_unit(realisation, multiples), models=models)
 
 
 def find_unit(realisation: Realisation, multiples: Mapping[str, int]) -> float:

@@ -2,37 +2,27 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable
 
 import numpy as np
 
-from gmid.amplifier.filtering.positions import place_plans
-from gmid.amplifier.filtering.realised import RealisedFilter, realise_filter
+from gmid.amplifier.filtering.realised import RealisedFilter
 from gmid.amplifier.filtering.responses import find_corners
-from gmid.amplifier.plan import AmplifierPlan, Supply
-from gmid.condition import Condition
-from gmid.device.device import Device
 from gmid.filters.demand_types import FilterDemands
 from gmid.filters.spec import Tolerance
 
 
 def measure_usage(
-    found: FilterDemands, plans: Sequence[AmplifierPlan],
-    bench: Iterable[tuple[Condition, Mapping[str, Device]]], supply: Supply, *,
-    tolerance: Tolerance,
-) -> float:  # fmt: skip
+    found: FilterDemands, cases: Iterable[RealisedFilter], *, tolerance: Tolerance
+) -> float:
     """Measure the largest used part of passband, stopband and delay in all conditions.
 
     Parameters
     ----------
     found : FilterDemands
         The filter.
-    plans : sequence of AmplifierPlan
-        Its amplifiers.
-    bench : iterable of (Condition, mapping of str to Device)
-        Conditions.
-    supply : Supply
-        What the amplifiers are fed with.
+    cases : iterable of RealisedFilter
+        It with its amplifiers, in every condition.
     tolerance : Tolerance
         Asked for.
 
@@ -47,14 +37,11 @@ def measure_usage(
     >>> measure_usage.__name__
     'measure_usage'
     """
-    by_position = place_plans(plans, found.realisation)
     budget, stick = found.budget, found.plane.fine
     taken = (budget.tuning_db + budget.mismatch_db) / budget.passband_db
     usable = tolerance.passband_db * (1 - taken)
     used = 0.0
-    case: RealisedFilter | None = None
-    for _, devices in bench:
-        case = realise_filter(found.realisation, by_position, devices, supply, start=case)
+    for case in cases:
         tuned, _ = find_corners(found, case)
         for common in (False, True):
             poles = case.poles(common_mode=common)

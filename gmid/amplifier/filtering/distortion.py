@@ -1,9 +1,11 @@
-"""Third harmonic of a filter from the static curves of its amplifiers, solved from the tables.
+"""Third harmonic of a filter from the static currents of its amplifiers, solved from the tables.
 
-Each amplifier is a surface: the current that it delivers over its input and its output voltage,
-the common-mode loop at work. Driven with the fundamental that the linear filter puts there, it
-makes a third harmonic of current, which the filter at three times the frequency carries to the
-output; all amplifiers add up with their phases. Harmonics do not act back.
+Each amplifier is driven through one period by the sines that the linear filter puts at its input
+and its output. What third harmonic its output current then has, the filter carries to the output
+at three times the frequency; all amplifiers add up with their phases. Harmonics do not act back.
+Two things do: the fundamental at an input grows until the current's fundamental is that of the
+linear filter; and where the sensing falls behind, the common mode moves with the signal, through
+the filter's elements at the inputs too, and changes what the amplifiers deliver there.
 """
 
 from __future__ import annotations
@@ -17,120 +19,24 @@ from numpy.typing import NDArray
 from gmid.amplifier.filtering.circuit import SOURCE, connect_amplifier
 from gmid.amplifier.filtering.realised import RealisedFilter
 from gmid.amplifier.plan import AmplifierPlan, Supply
-from gmid.amplifier.topology import build_circuit
+from gmid.amplifier.topology import NO_RESISTOR, build_circuit
 from gmid.circuit.bias import Bias, solve_bias
 from gmid.device.device import Device
+from gmid.filters.elements import AmplifierModel
 from gmid.filters.levels import measure_levels
+from gmid.filters.realisation import Realisation
 from gmid.network import transfers
 from gmid.network.pencil import ComplexArray
 
 Array = NDArray[np.float64]
 
-POWERS = tuple((j, degree - j) for degree in (1, 3, 5, 7) for j in range(degree + 1))
-"""Powers of input and output voltage in a surface; a balanced amplifier has odd ones only."""
-
-_POINTS = 7
-_ANGLES = 2 * np.pi * np.arange(32) / 32
-_LEAST = 1e-4
-
-
-@dataclass(frozen=True, eq=False)
-class Surface:
-    """Output current of an amplifier over both its voltages.
-
-    Parameters
-    ----------
-    input, output : ndarray, shape (...)
-        Largest differential voltages that it covers [V].
-    weights : ndarray, shape (..., len(POWERS))
-        Of the powers of both voltages over their largest values [A].
-
-    Examples
-    --------
-    >>> line = Surface(np.array(1.0), np.array(1.0), np.eye(len(POWERS))[1] * 1e-3)
-    >>> bool(abs(line.find_harmonic(np.array(0.1 + 0j), np.array(0j))) < 1e-15)
-    True
-    """
-
-    input: Array
-    output: Array
-    weights: Array
-
-    def find_harmonic(self, x: ComplexArray, y: ComplexArray) -> ComplexArray:
-        """Find the third harmonic of the current, for sines at both ports.
-
-        Parameters
-        ----------
-        x, y : ndarray of complex, shape (...)
-            Phasors of input and output voltage, peak [V].
-
-        Returns
-        -------
-        ndarray of complex, shape (...)
-            Peak [A].
-        """
-        turn = np.exp(1j * _ANGLES)
-        a = (x[..., None] * turn).real / self.input[..., None]
-        b = (y[..., None] * turn).real / self.output[..., None]
-        current = np.zeros(np.broadcast_shapes(a.shape, b.shape))
-        for k, (j, i) in enumerate(POWERS):
-            current = current + self.weights[..., k, None] * a**j * b**i
-        found = (current * np.exp(-3j * _ANGLES)).mean(axis=-1) * 2
-        return np.asarray(found, dtype=np.complex128)
-
-
-def trace_surface(
-    plan: AmplifierPlan, devices: Mapping[str, Device], supply: Supply, voltage: Array,
-    largest: tuple[Array, Array],
-) -> Surface:  # fmt: skip
-    """Solve the surface of an amplifier.
-
-    Parameters
-    ----------
-    plan : AmplifierPlan
-        The amplifier; its load does not count.
-    devices : mapping of str to Device
-        Of one condition.
-    supply : Supply
-        What it is fed with.
-    voltage : ndarray, shape (...)
-        Supplies [V].
-    largest : tuple of ndarray, shape (...)
-        Differential input and output voltage up to which it is wanted [V].
-
-    Returns
-    -------
-    Surface
-        Fitted to solutions at the nodes of Chebyshev.
-
-    Examples
-    --------
-    >>> from gmid.amplifier.example import example_devices, example_plan, example_supply
-    >>> found = trace_surface(example_plan(), example_devices(), example_supply(), np.array(1.8),
-    ...                       (np.array(0.01), np.array(0.2)))
-    >>> bool(found.weights[1] / 0.01 > 100e-6)
-    True
-    """
-    nodes = np.cos(np.pi * (np.arange(_POINTS) + 0.5) / _POINTS)
-    a, b = (part.ravel() for part in np.meshgrid(nodes, nodes, indexing="ij"))
-    stretch = (slice(None), *(None,) * np.ndim(voltage))
-    x, y = (part[stretch] * size for part, size in zip((a, b), largest, strict=True))
-    start: Bias | None = None
-    for share in (0.5, 1.0):  # on the way to full swing a solution nearby leads on
-        circuit = build_circuit(
-            plan, voltage=voltage, vcm=supply.common_mode.at(voltage),
-            input_level=supply.input_level.at(voltage), difference=share * x, loaded=False,
-            reference_current=supply.reference_current,
-        )  # fmt: skip
-        circuit.add_voltage_source("hold", "vop", "von", share * y)
-        start = solve_bias(circuit, devices, start=start)
-    assert start is not None
-    current = start.source_current("hold")
-    rows = np.stack([a**j * b**i for j, i in POWERS], axis=-1)
-    fit = np.linalg.pinv(rows)
-    weights = np.moveaxis(np.tensordot(fit, current, axes=1), 0, -1)
-    covered = [np.broadcast_to(one, np.shape(voltage)) for one in largest]
-    return Surface(covered[0], covered[1], weights)
+_HALF = 16  # points in half a period; the other half is its image
+_ANGLES = np.pi * np.arange(_HALF) / _HALF
+_EVEN = np.arange(0, 9, 2)  # harmonics that the common mode has
+_SMALL = 0.02  # of the amplitude, where the amplifiers are linear
+_PASSES = 2
+_SLOW = 1e-3  # of the fundamental, what stands for DC
+_STRONG = 1e3  # conductance that holds an output's common mode [S]
 
 
 @dataclass(frozen=True, eq=False)
@@ -232,21 +138,109 @@ def measure_harmonic(
     places = found.realisation.amplifiers
     fundamental, carried = _find_phasors(found, frequency)
     end = fundamental[..., -1]
-    shares: dict[str, ComplexArray] = {}
-    for unit, positions in _group(found.plans):
-        rows = [k for k, place in enumerate(places) if place.name in positions]
-        x = amplitude * fundamental[..., [2 * k for k in rows]]
-        y = amplitude * fundamental[..., [2 * k + 1 for k in rows]]
-        peaks = [np.maximum(np.abs(part).max(axis=-1), _LEAST) for part in (x, y)]
-        surface = trace_surface(unit, devices, supply, found.voltage, (peaks[0], peaks[1]))
-        for column, k in enumerate(rows):
-            name = places[k].name
-            current = positions[name] * surface.find_harmonic(x[..., column], y[..., column])
-            # the half circuit carries one side's current; both sides together make twice
-            shares[name] = 2 * carried[..., k] * current / (amplitude * end)
-    return FilterHarmonic(
-        frequency, amplitude, {place.name: shares[place.name] for place in places}
-    )
+    sines = amplitude * np.moveaxis(fundamental[..., :-1], -1, 0)
+    input, output = sines[0::2], sines[1::2]
+    run = _Run(found, devices, supply, *_share_common_mode(found.realisation, frequency))
+    gain = run.drive(_SMALL * input, 0 * output, 1) / (_SMALL * input)
+    linear = gain * input + run.drive(0 * input, _SMALL * output, 1) / _SMALL
+    for _ in range(_PASSES):
+        input = input + (linear - run.drive(input, output, 1)) / gain
+    third = run.drive(input, output, 3)
+    # the half circuit carries one side's current; both sides together make twice
+    shares = {
+        place.name: 2 * carried[..., k] * third[k] / (amplitude * end)
+        for k, place in enumerate(places)
+    }
+    return FilterHarmonic(frequency, amplitude, shares)
+
+
+class _Run:
+    """All amplifiers through half a period; arrays have axes (angles, positions, ...)."""
+
+    def __init__(
+        self, found: RealisedFilter, devices: Mapping[str, Device], supply: Supply,
+        reach: ComplexArray, load: Array,
+    ) -> None:  # fmt: skip
+        self.found, self.devices, self.supply = found, devices, supply
+        self.reach, self.load = reach, load
+        self.names = [place.name for place in found.realisation.amplifiers]
+        self._shift: Array | None = None
+        self._starts: dict[int, Bias] = {}
+
+    def drive(self, input: ComplexArray, output: ComplexArray, harmonic: int) -> ComplexArray:
+        """Give a harmonic of the output currents with sines at inputs and outputs [A].
+
+        The common mode at the inputs is what that of the outputs made of it the last time.
+        """
+        turn = np.conj(_turn(1, input.ndim + 1))
+        current, common_mode = self._solve((turn * input).real, (turn * output).real)
+        self._shift = _spread(self.reach, common_mode)
+        found: ComplexArray = 2 * np.mean(current * _turn(harmonic, current.ndim), axis=0)
+        return found
+
+    def _solve(self, input: Array, output: Array) -> tuple[Array, Array]:
+        """Solve output currents [A] and common modes, less the intended one [V]."""
+        shift = np.zeros(input.shape) if self._shift is None else self._shift
+        current, common_mode = np.zeros(input.shape), np.zeros(input.shape)
+        voltage, supply = self.found.voltage, self.supply
+        for k, (unit, positions) in enumerate(_group(self.found.plans)):
+            rows = [self.names.index(name) for name in positions]
+            stretch = (slice(None), *(None,) * (input.ndim - 2))
+            many = np.array([positions[self.names[row]] for row in rows], dtype=float)[stretch]
+            circuit = build_circuit(
+                unit, voltage=voltage, difference=input[:, rows], loaded=False,
+                vcm=supply.common_mode.at(voltage),
+                input_level=supply.input_level.at(voltage) + shift[:, rows],
+                reference_current=supply.reference_current,
+            )  # fmt: skip
+            circuit.add_voltage_source("hold", "vop", "von", output[:, rows])
+            resistance = np.minimum(
+                many / np.maximum(self.load[rows], 1 / NO_RESISTOR)[stretch], NO_RESISTOR
+            )
+            for side in "pn":
+                circuit.add_resistor(f"rhold{side}", f"vo{side}", "vcm", resistance)
+            bias = solve_bias(circuit, self.devices, start=self._starts.get(k))
+            self._starts[k] = bias
+            current[:, rows] = bias.source_current("hold") * many
+            mean = 0.5 * (bias.voltage("vop") + bias.voltage("von"))
+            common_mode[:, rows] = mean - bias.voltage("vcm")
+        return current, common_mode
+
+
+def _turn(harmonic: int, axes: int) -> ComplexArray:
+    """Give ``exp(-j k t)`` along the first of some axes."""
+    turned: ComplexArray = np.exp(-1j * harmonic * _ANGLES)
+    return turned.reshape(-1, *(1,) * (axes - 1))
+
+
+def _share_common_mode(realisation: Realisation, frequency: float) -> tuple[ComplexArray, Array]:
+    """Find how far the common mode of each output reaches each input, and what it has to drive.
+
+    Returns the reach at each of the even harmonics, shape (harmonics, inputs, outputs), and the
+    conductance of the filter at each output, the others held [S].
+    """
+    places = realisation.amplifiers
+    held = AmplifierModel(gm_total=0.0, output_conductance=_STRONG)
+    net = realisation.network({place.name: held for place in places}, common_mode=True)
+    names = [f"push_{place.name}" for place in places]
+    for name, place in zip(names, places, strict=True):
+        net.add_current_source(name, "0", place.output)
+    ends = [place.input for place in places] + [place.output for place in places]
+    found = transfers(net, names, ends, frequency * np.maximum(_EVEN, _SLOW))
+    inputs, outputs = found[:, : len(places)], found[:, len(places) :]
+    own = 1.0 / np.einsum("hkk->hk", outputs)[0].real
+    load = own - _STRONG * np.round(own / _STRONG)
+    return inputs * _STRONG, load
+
+
+def _spread(reach: ComplexArray, common_mode: Array) -> Array:
+    """Give the common mode at the inputs from that at the outputs, (angles, positions, ...)."""
+    axes, found = common_mode.ndim, np.zeros(common_mode.shape)
+    for harmonic, shares in zip(_EVEN, reach, strict=True):
+        line = np.mean(common_mode * _turn(int(harmonic), axes), axis=0)
+        there = np.tensordot(shares, line, axes=1) * (2 if harmonic else 1)
+        found += (there * np.conj(_turn(int(harmonic), axes))).real
+    return found
 
 
 def _find_phasors(found: RealisedFilter, frequency: float) -> tuple[ComplexArray, ComplexArray]:

@@ -143,7 +143,13 @@ class Transient:
             charging += self._push(capacitances).T
         slopes += matrix
         slopes[bad], charging[bad] = np.eye(m), 0.0
-        change = -np.linalg.solve(slopes, (leaving + charging)[..., None])[..., 0].T
+        try:
+            change = np.linalg.solve(slopes, (leaving + charging)[..., None])
+        except np.linalg.LinAlgError:  # those of the batch whose pivots are zero have no solution
+            dead = np.linalg.slogdet(slopes)[0] == 0
+            slopes[dead], bad = np.eye(m), bad | dead
+            change = np.linalg.solve(slopes, (leaving + charging)[..., None])
+        change = -change[..., 0].T
         change[:, bad] = np.nan
         return np.asarray(change)
 

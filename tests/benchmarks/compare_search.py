@@ -3,12 +3,14 @@
 Run by hand::
 
     python tests/benchmarks/compare_search.py requests [NAME ...]
-    python tests/benchmarks/compare_search.py evolution [--generations N] [NAME ...]
+    python tests/benchmarks/compare_search.py evolution [--times N] [--size P] [NAME ...]
 
 `requests` sizes every file of tests/requests, compares the verdict with expected.toml, simulates
 what was met in all conditions at low, nominal and high supply, and prints the worst difference
 between prediction and simulation. `evolution` lets scipy's differential evolution look for a
-cheaper amplifier of the same form, starting from perturbed closed-form sketches.
+cheaper amplifier of the same form by the same exact analysis, spending several times the bias
+points, from closed-form sketches with every number moved at random; what it found is then also
+refined by the search's own moves.
 """
 
 from __future__ import annotations
@@ -16,17 +18,22 @@ from __future__ import annotations
 import argparse
 import time
 import tomllib
-from dataclasses import replace
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 
 from gmid.amplifier import predict
 from gmid.amplifier.search.dress import dress
-from gmid.amplifier.search.evaluation import Evaluator
+from gmid.amplifier.search.evaluation import Evaluator, Outcome, Point
 from gmid.amplifier.search.find import SearchResult, find_plan
-from gmid.amplifier.search.refine import Refiner, rate
-from gmid.amplifier.search.searcher import Searcher, list_points
+from gmid.amplifier.search.refine import Candidate, Refiner, rate
+from gmid.amplifier.search.searcher import Searcher
+from gmid.amplifier.search.sketch import draw_charts
+from gmid.amplifier.search.space import Rows, Space
+from gmid.amplifier.search.starts import choose_conditions, find_starts
 from gmid.request import open_bench, read_request
 from gmid.simulation.comparison import compare_plan
 from gmid.simulation.plans import simulate_plan
@@ -34,7 +41,8 @@ from gmid.simulation.plans import simulate_plan
 ROOT = Path(__file__).resolve().parents[2]
 REQUESTS = ROOT / "tests" / "requests"
 MODELS = ROOT / "demo" / "larch180" / "models"
-FIVE = ("slow_sensor", "cascoded_60", "cascoded_p", "large_load", "tight_noise")
+FIVE = ("slow_sensor", "cascoded_60", "cascoded_p", "low_supply", "receive_channel")
+POLISHES = 6
 LIMITS = {"dc_gain_db": 0.1, "gbw": 0.003, "phase_margin": 0.2, "supply_current": 0.001}
 ABSOLUTE = ("dc_gain_db", "phase_margin")
 
@@ -97,71 +105,183 @@ def show_requests(names: list[str]) -> None:
               flush=True)  # fmt: skip
 
 
-def evolve(name: str, generations: int) -> tuple[float, float, float]:
-    """Give the current found by the search, by evolution, and what evolution still misses."""
-    from scipy.optimize import differential_evolution
+@dataclass
+class Spent:
+    """Bias points evaluated so far, with all that is measured there."""
 
-    found, _ = size(name)
+    points: int = 0
+
+
+@contextmanager
+def counted() -> Iterator[Spent]:
+    """Count the bias points that any evaluator of this process solves."""
+    spent, plain = Spent(), Evaluator.evaluate
+
+    def evaluate(self: Evaluator, rows: Rows, points: Sequence[Point],
+                 watch: np.ndarray | None = None) -> Outcome:  # fmt: skip
+        spent.points += len(rows) * len(points)
+        return plain(self, rows, points, watch)
+
+    Evaluator.evaluate = evaluate  # type: ignore[method-assign]
+    try:
+        yield spent
+    finally:
+        Evaluator.evaluate = plain  # type: ignore[method-assign]
+
+
+def open_searcher(name: str) -> Searcher:
     request = read_request(REQUESTS / f"{name}.toml")
-    variant = found.plan.variant
-    choices = replace(
-        request.choices, input_pair=variant.input_pair, output=variant.output,
-        common_mode_sense=variant.common_mode_sense,
-    )  # fmt: skip
-    search = Searcher(
+    return Searcher(
         request.demands, (request.load_capacitance, request.load_resistance),
         tuple(open_bench(request.process)), request.process.devices, request.process.own_well,
-        request.supply, choices, request.matching,
+        request.supply, request.choices, request.matching,
     )  # fmt: skip
-    ((space, starts),) = search.rank_forms()
-    task = search.task
-    evaluator = Evaluator(space, search.setting)
-    everywhere = list_points(task, search.goals, task.supply.voltages[[0, -1]])
-    refiner = Refiner(evaluator, *everywhere, choices.minimise)
-    points, watch = list_points(task, search.goals, task.supply.voltages[:1])
 
-    def cost(columns: np.ndarray) -> np.ndarray:
-        rows = np.clip(np.round(columns.T).astype(np.intp), 0, space.largest)
-        return rate(evaluator.evaluate(rows, points, watch), choices.minimise)
 
-    population = perturb(dress(task, space, starts), space.largest)
-    result = differential_evolution(
-        cost, [(0, max(int(top), 1e-9)) for top in space.largest], init=population,
-        maxiter=generations, integrality=True, vectorized=True, updating="deferred", tol=0,
-        polish=False, rng=1, mutation=(0.4, 0.9), recombination=0.8,
+class Evolution:
+    """Differential evolution on the logarithms of all numbers of a form.
+
+    It begins with rough sketches of the form, every number of them moved at random, and knows
+    nothing of what the search found but the places where that binds; places where its own best
+    misses something are added until there are none.
+    """
+
+    def __init__(self, search: Searcher, refiner: Refiner, known: Candidate) -> None:
+        self.space, self.task = refiner.space, search.task
+        self.refiner = refiner
+        self.evaluator = Evaluator(self.space, search.setting)
+        self.minimise = search.choices.minimise
+        self.values = [np.log(self.space.values[one]) for one in self.space.names]
+        self.chosen = self._find_places(known)
+
+    def _find_places(self, known: Candidate) -> np.ndarray:
+        """Give what is watched: each goal where it is worst, and the largest current."""
+        margins = np.where(self.refiner.watch, known.outcome.margins[0], np.inf)
+        chosen = np.zeros(margins.shape, dtype=bool)
+        for goal in range(margins.shape[1]):
+            chosen[int(np.argmin(margins[:, goal])), goal] = True
+        chosen[int(np.argmax(known.outcome.current[0])), 0] = True
+        return chosen
+
+    def add_places(self, seen: Candidate) -> bool:
+        """Watch also where a candidate misses; tell whether there was such a place."""
+        margins = np.where(self.refiner.watch, seen.outcome.margins[0], np.inf)
+        before = self.chosen.sum()
+        for goal in np.flatnonzero(margins.min(axis=0) < 0):
+            self.chosen[int(np.argmin(margins[:, goal])), goal] = True
+        return bool(self.chosen.sum() > before)
+
+    def decode(self, columns: np.ndarray) -> Rows:
+        """Round logarithms to the nearest allowed numbers."""
+        found = [
+            np.searchsorted(0.5 * (one[1:] + one[:-1]), column)
+            for one, column in zip(self.values, columns, strict=True)
+        ]
+        return np.stack(found, axis=-1)
+
+    def cost(self, columns: np.ndarray) -> np.ndarray:
+        rows, which = np.unique(self.decode(columns), axis=0, return_inverse=True)
+        active = np.flatnonzero(self.chosen.any(axis=1))
+        points = [self.refiner.points[k] for k in active]
+        outcome = self.evaluator.evaluate(rows, points, self.chosen[active])
+        return rate(outcome, self.minimise)[which.ravel()]
+
+    def populate(self, size: int) -> np.ndarray:
+        """Make a population around many sketches: every number moved, by a third as a rule."""
+        low = float(self.task.supply.voltages[0])
+        charts = [
+            draw_charts(self.space, self.task.book, k, self.task.supply, low, self.task.swing)
+            for k in choose_conditions(self.task, self.space)
+        ]
+        rows = dress(self.task, self.space, find_starts(self.task, self.space, charts, size))
+        dice = np.random.default_rng(1)
+        base = rows[dice.integers(0, len(rows), size)]
+        columns = [one[base[:, k]] for k, one in enumerate(self.values)]
+        moved = np.stack(columns, axis=-1) + dice.normal(0.0, 0.35, base.shape)
+        bounds = np.array(self.bounds)
+        return np.clip(moved, bounds[:, 0], bounds[:, 1])
+
+    @property
+    def bounds(self) -> list[tuple[float, float]]:
+        return [(float(one[0]), max(float(one[-1]), float(one[0]) + 1e-9)) for one in self.values]
+
+    def run(self, spent: Spent, budget: int, size: int) -> Candidate:
+        """Evolve until so many bias points are spent."""
+        from scipy.optimize import differential_evolution
+
+        population, limit = self.populate(size), spent.points + budget
+        stop = [0.0]
+
+        def enough(intermediate_result: object) -> bool:
+            return spent.points >= stop[0]
+
+        for part in (0.5, 0.75, 0.9, 1.0):
+            stop[0] = limit - (1 - part) * budget
+            result = differential_evolution(
+                self.cost, self.bounds, init=population, maxiter=100_000, vectorized=True,
+                updating="deferred", tol=0, atol=-1, polish=False, rng=1,
+                strategy="currenttobest1bin", mutation=(0.3, 0.8), recombination=0.7,
+                callback=enough,
+            )  # fmt: skip
+            population = result.population
+            best = self.refiner.settle(self.decode(result.x[:, None]))[0]
+            self.add_places(best)
+        return best
+
+
+def evolve(name: str, times: float, size: int) -> str:
+    """Give a line: the search, evolution, and evolution with the search's own moves after it."""
+    search = open_searcher(name)
+    with counted() as spent:
+        refiner, known = search.run()
+        used, begun = spent.points, time.process_time()
+        evolution = Evolution(search, refiner, known)
+        found = evolution.run(spent, int(times * used), size)
+        more, seconds = spent.points - used, time.process_time() - begun
+        polished = found
+        for _ in range(POLISHES):
+            better = refiner.improve(polished)
+            if better.cost >= polished.cost - 1e-3:
+                break
+            polished = better
+    mine, other, last = (
+        float(one.outcome.current.max()) for one in (known, found, polished)
     )  # fmt: skip
-    best = np.clip(np.round(result.x).astype(np.intp), 0, space.largest)
-    final = refiner.settle(best[None])[0]
-    mine = found.floor * found.ratio_to_floor
-    return mine, float(final.outcome.current.max()), final.missed
+    return (
+        f"{name:18} {mine * 1e6:7.2f}uA {used:8d} {other * 1e6:7.2f}uA {more:9d} {seconds:5.0f}s "
+        f"{found.missed:7.4f} {mine / other:6.3f} {last * 1e6:7.2f}uA {polished.missed:7.4f} "
+        f"{mine / last:6.3f}\n{compare(refiner.space, known, polished)}"
+    )
 
 
-def perturb(rows: np.ndarray, largest: np.ndarray, size: int = 120) -> np.ndarray:
-    """Make a population around sketches."""
-    rng = np.random.default_rng(1)
-    base = rows[rng.integers(0, len(rows), size)].astype(float)
-    base += np.round(rng.normal(0.0, 1.5, base.shape) * (rng.random(base.shape) < 0.4))
-    return np.clip(base, 0, largest)
+def compare(space: Space, known: Candidate, other: Candidate) -> str:
+    """Spell the numbers in which two candidates differ."""
+    words = []
+    for name, column in space.column.items():
+        one, two = (float(space.values[name][at.row[column]]) for at in (known, other))
+        if one != two:
+            words.append(f"{name} {one:.3g} -> {two:.3g}")
+    return "    " + ", ".join(words)
 
 
-def show_evolution(names: list[str], generations: int) -> None:
-    print(f"{'request':18} {'search':>9} {'evolution':>9} {'ratio':>6} {'missed by evolution':>20}")
+def show_evolution(names: list[str], times: float, size: int) -> None:
+    print(f"{'request':18} {'search':>9} {'points':>8} {'evolution':>9} {'points':>9} {'cpu':>6} "
+          f"{'missed':>7} {'ratio':>6} {'refined':>9} {'missed':>7} {'ratio':>6}")  # fmt: skip
     for name in names:
-        mine, other, missed = evolve(name, generations)
-        print(f"{name:18} {mine * 1e6:7.2f}uA {other * 1e6:7.2f}uA {mine / other:6.3f} "
-              f"{missed:20.4f}", flush=True)  # fmt: skip
+        print(evolve(name, times, size), flush=True)
 
 
 def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     parser.add_argument("what", choices=("requests", "evolution"))
     parser.add_argument("names", nargs="*")
-    parser.add_argument("--generations", type=int, default=150)
+    parser.add_argument("--times", type=float, default=4.0, help="of the search's bias points")
+    parser.add_argument("--size", type=int, default=100, help="of the population")
     asked = parser.parse_intermixed_args()
     if asked.what == "requests":
         show_requests(asked.names or list_names())
     else:
-        show_evolution(asked.names or list(FIVE), asked.generations)
+        show_evolution(asked.names or list(FIVE), asked.times, asked.size)
 
 
 if __name__ == "__main__":

@@ -141,7 +141,8 @@ def draw_chart(
         drain = "diode"
     elif way == "edge":
         first = device.at(length=long, vgs=gates, vds=0.5, vsb=bulk)
-        drain = np.minimum(first.vdsat + _ROOM, sweep.vds[-1])
+        # where a device is off, a derived vdsat may be anything
+        drain = np.minimum(np.maximum(first.vdsat, 0.0) + _ROOM, sweep.vds[-1])
     else:
         drain = np.full(gates.shape, float(np.clip(float(way), sweep.vds[0], sweep.vds[-1])))
     point = device.at(length=long, vgs=gates, vds=drain, vsb=bulk)

@@ -9,13 +9,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from gmid.amplifier.checks import Check, judge
+from gmid.amplifier.checks import Check
 from gmid.amplifier.plan import AmplifierPlan, Choices, Matching, Requirement, Supply
-from gmid.amplifier.predicting import predict_everywhere
-from gmid.amplifier.search.advice import suggest
+from gmid.amplifier.search.advice import judge_everywhere, suggest
 from gmid.amplifier.search.floor import measure_floor
 from gmid.amplifier.search.searcher import Progress, Searcher
-from gmid.amplifier.search.starts import Task
 from gmid.condition import Condition
 from gmid.device.device import Device
 from gmid.errors import DataFault
@@ -43,7 +41,8 @@ class SearchResult:
     ratio_to_floor : float
         Supply current over the floor [-].
     suggestion : str
-        What would help most, where something is missed; empty otherwise.
+        Where something is missed: what binds, where, by how much, and what would help most; empty
+        otherwise.
     seconds : float
         Time taken [s].
     """
@@ -130,10 +129,12 @@ def find_plan(
         best.row, name=name, load_capacitance=load_capacitance, load_resistance=load_resistance,
         demands=task.demands,
     )  # fmt: skip
-    checks, largest = _judge(plan, task, choices, search.matching)
+    checks, largest = judge_everywhere(plan, task, choices, search.matching)
     binding = min(checks, key=lambda check: check.margin)
     met = all(check.met for check in checks)
-    suggestion = "" if met else suggest(refiner, best, task, choices, search.matching, say)
+    suggestion = ""
+    if not met:
+        suggestion = suggest(refiner, best, task, choices, search.matching, checks, say)
     floor = measure_floor(task, roles)
     say(1.0, "done")
     return SearchResult(
@@ -151,11 +152,3 @@ def _keep_rising(progress: Progress) -> Progress:
         progress(told[0], words)
 
     return say
-
-
-def _judge(
-    plan: AmplifierPlan, task: Task, choices: Choices, matching: Mapping[str, Matching]
-) -> tuple[tuple[Check, ...], float]:
-    """Judge a plan, and give its largest supply current at the nominal reference."""
-    found = predict_everywhere(plan, task.bench, task.supply)
-    return judge([found], choices, matching=matching), float(found.supply_current.max())

@@ -184,7 +184,26 @@ class Searcher:
             other, again = self._finish(other, start)
             if again.cost < best.cost:
                 refiner, best = other, again
-        return refiner, best
+        return self._try_ratio(refiner, best) if best.missed <= 0 else (refiner, best)
+
+    def _try_ratio(self, refiner: Refiner, best: Candidate) -> tuple[Refiner, Candidate]:
+        """Begin once more from mirrors of twice the ratio that half the current goes into.
+
+        Every single move on the way there looks worse, so that rounds do not find it.
+        """
+        space, row = refiner.space, best.row.copy()
+        for name in ("count.load", "count.tail"):
+            allowed, column = space.values[name], space.column[name]
+            wanted = 0.5 * allowed[row[column]]
+            if wanted < allowed[0]:
+                return refiner, best
+            row[column] = int(np.argmin(np.abs(allowed - wanted)))
+        other = self.open_refiner(space)
+        start = other.improve(other.settle(row[None])[0])
+        if start.cost > best.cost:
+            return refiner, best
+        other, again = self._finish(other, start)
+        return (other, again) if again.cost < best.cost else (refiner, best)
 
     def _round(self, refiner: Refiner, best: Candidate, share: float) -> Candidate:
         self.say(share, f"refining {refiner.space.form.variant}")

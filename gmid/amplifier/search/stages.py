@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gmid.amplifier.search.dress import dress
-from gmid.amplifier.search.evaluation import Evaluator, Point
+from gmid.amplifier.search.evaluation import FAILED, Evaluator, Point
 from gmid.amplifier.search.refine import Candidate, rate
 from gmid.amplifier.search.sketch import draw_charts
 from gmid.amplifier.search.space import Rows, Space
@@ -20,6 +20,9 @@ if TYPE_CHECKING:
 
 _STARTS = 12
 _TELLING = 2
+_OUTSIDE = 1e3
+
+Array = NDArray[np.float64]
 
 
 @dataclass(frozen=True, eq=False)
@@ -69,13 +72,20 @@ def rank_form(search: Searcher, space: Space) -> tuple[Space, Starts]:
     >>> len(rank_form(example_search(), example_space())[1].cost)
     12
     """
+    return space, _find_starts(search, space, ends=1)
+
+
+def _find_starts(search: Searcher, space: Space, *, ends: int) -> Starts:
+    """Apply the closed forms at the low supply, or at both ends of it."""
     task = search.task
-    low = float(task.supply.voltages[0])
+    chosen, voltages = choose_conditions(task, space), task.supply.voltages
+    places = [(k, voltages[0]) for k in chosen]
+    places += [(k, voltages[-1]) for k in chosen[:_TELLING] if ends > 1]
     charts = [
-        draw_charts(space, task.book, k, task.supply, low, task.swing)
-        for k in choose_conditions(task, space)
+        draw_charts(space, task.book, k, task.supply, float(voltage), task.swing)
+        for k, voltage in places
     ]
-    return space, find_starts(task, space, charts, _STARTS)
+    return find_starts(task, space, charts, _STARTS)
 
 
 def try_starts(search: Searcher, form: tuple[Space, Starts]) -> tuple[Rows, float]:
@@ -103,13 +113,24 @@ def try_starts(search: Searcher, form: tuple[Space, Starts]) -> tuple[Rows, floa
     >>> row.shape == example_space().largest.shape
     True
     """
-    task, (space, starts) = search.task, form
-    low = float(task.supply.voltages[0])
+    space, starts = form
+    rows, rated = _rate_starts(search, space, starts)
+    if not np.isfinite(rated).any():
+        rows, rated = _rate_starts(search, space, _find_starts(search, space, ends=2))
+    return rows[int(np.argmin(rated))], float(min(rated.min(), _OUTSIDE))
+
+
+def _rate_starts(search: Searcher, space: Space, starts: Starts) -> tuple[Rows, Array]:
+    """Rate starts at the low supply; infinite where the high one leads out of the tables."""
+    task = search.task
     chosen = choose_conditions(task, space)[:_TELLING]
-    rows = dress(task, space, starts)
-    evaluator = Evaluator(space, search.setting)
-    rated = rate(evaluator.evaluate(rows, [Point(k, low) for k in chosen]), search.choices.minimise)
-    return rows[int(np.argmin(rated))], float(rated.min())
+    rows, evaluator = dress(task, space, starts), Evaluator(space, search.setting)
+    low, high = (
+        evaluator.evaluate(rows, [Point(k, float(voltage)) for k in chosen])
+        for voltage in task.supply.voltages[[0, -1]]
+    )
+    inside = (high.margins > FAILED).all(axis=(1, 2))
+    return rows, np.where(inside, rate(low, search.choices.minimise), np.inf)
 
 
 def refine_start(search: Searcher, form: tuple[Space, Rows]) -> Refined:

@@ -11,11 +11,11 @@ nominal supply, with the difference over its passband and what is used of its to
 from __future__ import annotations
 
 import sys
-import time
 import tomllib
 from pathlib import Path
 
 import numpy as np
+from spent import measure_spent
 
 from gmid.amplifier.filtering.realised import realise_filter
 from gmid.amplifier.filtering.result import FilterSizing
@@ -67,7 +67,7 @@ def main(names: list[str]) -> None:
     expected = tomllib.loads((REQUESTS / "expected_filters.toml").read_text(encoding="utf-8"))
     for name in names or sorted(expected):
         request = read_request(REQUESTS / f"filter_{name}.toml")
-        begun = time.process_time()
+        begun = measure_spent()
         try:
             found = size(request)
         except GmidError as trouble:
@@ -79,7 +79,7 @@ def main(names: list[str]) -> None:
                 error, deviation = simulate(request, found)
                 text += f"; simulated: {error:.4f} dB off, {deviation:.3f} dB from ideal"
         agrees = "as expected" if verdict == expected[name]["verdict"] else "NOT AS EXPECTED"
-        spent = time.process_time() - begun
+        spent = measure_spent() - begun
         sys.stdout.write(f"{name}: {verdict}, {agrees}, {spent:.0f} s: {text}\n")
         sys.stdout.flush()
 

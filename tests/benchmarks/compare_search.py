@@ -16,7 +16,6 @@ refined by the search's own moves.
 from __future__ import annotations
 
 import argparse
-import time
 import tomllib
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
@@ -24,6 +23,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
+from spent import measure_spent
 
 from gmid.amplifier import predict
 from gmid.amplifier.search.dress import dress
@@ -54,14 +54,14 @@ def list_names() -> list[str]:
 
 def size(name: str) -> tuple[SearchResult, float]:
     request = read_request(REQUESTS / f"{name}.toml")
-    begun = time.process_time()
+    begun = measure_spent()
     found = find_plan(
         request.demands, load_capacitance=request.load_capacitance,
         load_resistance=request.load_resistance, bench=open_bench(request.process),
         roles=request.process.devices, own_well=request.process.own_well, supply=request.supply,
         choices=request.choices, matching=request.matching, name=name,
     )  # fmt: skip
-    return found, time.process_time() - begun
+    return found, measure_spent() - begun
 
 
 def simulate(name: str, found: SearchResult) -> tuple[float, str]:
@@ -234,10 +234,10 @@ def evolve(name: str, times: float, size: int) -> str:
     search = open_searcher(name)
     with counted() as spent:
         refiner, known = search.run()
-        used, begun = spent.points, time.process_time()
+        used, begun = spent.points, measure_spent()
         evolution = Evolution(search, refiner, known)
         found = evolution.run(spent, int(times * used), size)
-        more, seconds = spent.points - used, time.process_time() - begun
+        more, seconds = spent.points - used, measure_spent() - begun
         polished = found
         for _ in range(POLISHES):
             better = refiner.improve(polished)

@@ -10,9 +10,9 @@ The process has a thick oxide, long channels and a supply of 3.3 V; its table is
 from __future__ import annotations
 
 import sys
-import time
 
 import numpy as np
+from spent import measure_spent
 
 from gmid.amplifier.filtering.realised import realise_filter
 from gmid.amplifier.filtering.sizing import size_filter
@@ -44,14 +44,14 @@ SPECS = {
 def main(names: list[str]) -> None:
     bench = [(one, find_devices(PROCESS, str(one))) for one in CONDITIONS]
     for name in names or list(SPECS):
-        begun = time.process_time()
+        begun = measure_spent()
         tolerance = Tolerance(passband_db=0.5 if name == "gm_c" else 0.3, counts="tuned-shape")
         found = size_filter(
             SPECS[name], tolerance, bench=bench, roles={"n": "nmos", "p": "pmos"}, supply=SUPPLY
         )
         sys.stdout.write(
             f"{name}: {found!r}, {found.review.largest_current / found.floor:.2f} times the "
-            f"floor, {time.process_time() - begun:.0f} s\n"
+            f"floor, {measure_spent() - begun:.0f} s\n"
         )
         low, high = found.demands.plane.fine.passband
         made = found.demands.realisation

@@ -17,11 +17,12 @@ from __future__ import annotations
 import argparse
 import random
 import sys
-import time
 import traceback
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
+
+from spent import measure_spent
 
 import gmid
 from gmid.condition import Condition
@@ -127,22 +128,22 @@ class Outcome:
 
 def try_one(text: str, index: int) -> tuple[Outcome, Sizing | None]:
     """Size one request; an uncaught error is an outcome here, with its traceback printed."""
-    begun = time.process_time()
+    begun = measure_spent()
     try:
         found = gmid.size(parse_request(text, name=f"random/{index}", path=BESIDE))
     except GmidError as fault:
-        return Outcome(index, "refused", time.process_time() - begun, str(fault)), None
+        return Outcome(index, "refused", measure_spent() - begun, str(fault)), None
     except Exception as error:
         traceback.print_exc()
         sys.stderr.write(f"--- the request:\n{text}\n")
         note = f"{type(error).__name__}: {error}"
-        return Outcome(index, "RAISED", time.process_time() - begun, note), None
+        return Outcome(index, "RAISED", measure_spent() - begun, note), None
     note = found.sheet.sentence
     if found.is_met:
         amplifier = found.sheet.amplifiers[0]
         current = max(row.supply_current for row in amplifier.conditions)
         note = f"{found.plans[0].variant}, {current * 1e6:.3g} uA"
-    return Outcome(index, found.sheet.verdict, time.process_time() - begun, note), found
+    return Outcome(index, found.sheet.verdict, measure_spent() - begun, note), found
 
 
 def rate_simulation(found: Sizing) -> tuple[float, str]:

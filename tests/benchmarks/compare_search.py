@@ -25,7 +25,7 @@ from pathlib import Path
 import numpy as np
 from spent import measure_spent
 
-from gmid.amplifier import predict
+from gmid.amplifier import crew, predict
 from gmid.amplifier.search.dress import dress
 from gmid.amplifier.search.evaluation import Evaluator, Outcome, Point
 from gmid.amplifier.search.find import SearchResult, find_plan
@@ -114,8 +114,8 @@ class Spent:
 
 @contextmanager
 def counted() -> Iterator[Spent]:
-    """Count the bias points that any evaluator of this process solves."""
-    spent, plain = Spent(), Evaluator.evaluate
+    """Count the bias points that evaluators solve, all of them in this process meanwhile."""
+    spent, plain, counting = Spent(), Evaluator.evaluate, crew.count_processes
 
     def evaluate(self: Evaluator, rows: Rows, points: Sequence[Point],
                  watch: np.ndarray | None = None) -> Outcome:  # fmt: skip
@@ -123,10 +123,12 @@ def counted() -> Iterator[Spent]:
         return plain(self, rows, points, watch)
 
     Evaluator.evaluate = evaluate  # type: ignore[method-assign]
+    crew.count_processes = lambda: 1
     try:
         yield spent
     finally:
         Evaluator.evaluate = plain  # type: ignore[method-assign]
+        crew.count_processes = counting
 
 
 def open_searcher(name: str) -> Searcher:
